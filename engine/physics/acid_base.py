@@ -2,8 +2,8 @@
 
 References
 ----------
-c46 : Clinical and Laboratory Standards Institute, "Blood gas and pH analysis and related measurements", approved
-    guideline C46 (bicarbonate, and base excess of the extracellular fluid).
+c46 : Clinical and Laboratory Standards Institute, "Blood gas and pH analysis and related measurements",
+    approved guideline C46 (bicarbonate, and base excess of the extracellular fluid).
 lang2002 : W. Lang, R. Zander, "The accuracy of calculated base excess in blood", Clin. Chem. Lab. Med. 40(4),
     404-410, 2002 (whole blood).
 """
@@ -42,16 +42,16 @@ def hco3_mmol_per_l(ph: ArrayLike, pco2_mmhg: ArrayLike) -> Array:
 
     Notes
     -----
-    Henderson-Hasselbalch with the constants of c46, 0.0307 and 6.105. Other pairs in print differ by up to 4.5 %
-    (23.9 to 25.0 at 7.40 and 40).
+    Henderson-Hasselbalch with the constants of c46, 0.0307 and 6.105. Other pairs in print differ by up to
+    4.5 % (23.9 to 25.0 at 7.40 and 40).
 
     Examples
     --------
     >>> round(float(hco3_mmol_per_l(7.40, 40.0)), 2)
     24.22
     """
-    dissolved = _SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, dtype=float)
-    return dissolved * np.power(10.0, np.asarray(ph, dtype=float) - _PK)
+    dissolved = _SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, dtype=np.float64)
+    return dissolved * np.power(10.0, np.asarray(ph, dtype=np.float64) - _PK)
 
 
 def ph_from_hco3(hco3_mmol_per_l: ArrayLike, pco2_mmhg: ArrayLike) -> Array:
@@ -64,8 +64,8 @@ def ph_from_hco3(hco3_mmol_per_l: ArrayLike, pco2_mmhg: ArrayLike) -> Array:
     >>> round(float(ph_from_hco3(24.0, 40.0)), 3)
     7.396
     """
-    dissolved = _SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, dtype=float)
-    return _PK + np.log10(np.asarray(hco3_mmol_per_l, dtype=float) / dissolved)
+    dissolved = _SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, dtype=np.float64)
+    return _PK + np.log10(np.asarray(hco3_mmol_per_l, dtype=np.float64) / dissolved)
 
 
 def standard_base_excess_mmol_per_l(ph: ArrayLike, pco2_mmhg: ArrayLike) -> Array:
@@ -91,19 +91,19 @@ def standard_base_excess_mmol_per_l(ph: ArrayLike, pco2_mmhg: ArrayLike) -> Arra
     array([-0.6, -5.4])
     """
     above_normal = hco3_mmol_per_l(ph, pco2_mmhg) - _NORMAL_HCO3_MMOL_PER_L
-    return above_normal + _ECF_BUFFER_MMOL_PER_L * (np.asarray(ph, dtype=float) - _NORMAL_PH)
+    return above_normal + _ECF_BUFFER_MMOL_PER_L * (np.asarray(ph, dtype=np.float64) - _NORMAL_PH)
 
 
 def _lang_terms(hb_g_per_dl: ArrayLike, so2: ArrayLike) -> tuple[Array, Array, Array]:
     """Plasma share, buffer value (mmol/L per pH) and oxygenation term (mmol/L) of lang2002."""
-    hb = np.asarray(hb_g_per_dl, dtype=float)
-    return 1.0 - 0.0143 * hb, 9.5 + 1.63 * hb, 0.2 * hb * (1.0 - np.asarray(so2, dtype=float))
+    hb = np.asarray(hb_g_per_dl, dtype=np.float64)
+    return 1.0 - 0.0143 * hb, 9.5 + 1.63 * hb, 0.2 * hb * (1.0 - np.asarray(so2, dtype=np.float64))
 
 
 def whole_blood_base_excess_mmol_per_l(
     ph: ArrayLike, pco2_mmhg: ArrayLike, hb_g_per_dl: ArrayLike, so2: ArrayLike
 ) -> Array:
-    """Base excess of blood: what a passage through the lung, too short for tissue to take part, leaves unchanged.
+    """Base excess of blood: what a passage through the lung leaves unchanged, as tissue has no time to act.
 
     Parameters
     ----------
@@ -121,7 +121,8 @@ def whole_blood_base_excess_mmol_per_l(
 
     Notes
     -----
-    lang2002: (1 - 0.0143 Hb) [(0.0304 PCO2 10^(pH - 6.1) - 24.26) + (9.5 + 1.63 Hb)(pH - 7.4)] - 0.2 Hb (1 - S).
+    lang2002: (1 - 0.0143 Hb) [(0.0304 PCO2 10^(pH - 6.1) - 24.26) + (9.5 + 1.63 Hb)(pH - 7.4)]
+    - 0.2 Hb (1 - S). Mean error 0.9 mmol/L against 148 reference samples, BE -30 to 30, PCO2 12 to 96 mmHg.
 
     Examples
     --------
@@ -129,10 +130,9 @@ def whole_blood_base_excess_mmol_per_l(
     0.0
     """
     plasma_share, buffer_value, from_oxygen = _lang_terms(hb_g_per_dl, so2)
-    acidity = np.asarray(ph, dtype=float)
-    hco3 = (
-        _LANG_SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, float) * np.power(10.0, acidity - _LANG_PK)
-    )
+    acidity = np.asarray(ph, dtype=np.float64)
+    dissolved = _LANG_SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, dtype=np.float64)
+    hco3 = dissolved * np.power(10.0, acidity - _LANG_PK)
     from_buffers = buffer_value * (acidity - _NORMAL_PH)
     return plasma_share * (hco3 - _LANG_NORMAL_HCO3_MMOL_PER_L + from_buffers) - from_oxygen
 
@@ -140,8 +140,8 @@ def whole_blood_base_excess_mmol_per_l(
 def _ph_where(hco3_at_normal_ph: Array, buffer_value: ArrayLike, total: ArrayLike) -> Array:
     """Solve hco3 10^x + buffer x = total for pH = 7.40 + x, any shape, by Newton's method.
 
-    The left side rises and is convex, so the steps close in from above wherever they start. NaN where they do not
-    settle. All in mmol/L.
+    The left side rises and is convex, so the steps close in from above wherever they start. NaN where they do
+    not settle. All in mmol/L.
     """
     hco3, buffer, total = np.broadcast_arrays(hco3_at_normal_ph, buffer_value, total)
     x = np.zeros(np.shape(hco3))
@@ -171,15 +171,16 @@ def ph_at_standard_base_excess(pco2_mmhg: ArrayLike, standard_base_excess_mmol_p
 
     Notes
     -----
-    The inverse of c46, by Newton's method to 1e-12. For minutes to hours after a change of ventilation, before the
-    kidney answers: it reproduces the bedside rules of +1 mmol/L of bicarbonate per 10 mmHg up and -2 per 10 down.
+    The inverse of c46, by Newton's method to 1e-12. For minutes to hours after a change of ventilation,
+    before the kidney answers: it reproduces the bedside rules of +1 mmol/L of bicarbonate per 10 mmHg up and
+    -2 per 10 down.
 
     Examples
     --------
     >>> ph_at_standard_base_excess([40.0, 80.0, 20.0], -0.58).round(2)
-    array([7.4 , 7.17, 7.62])
+    array([7.4 , 7.16, 7.63])
     """
-    excess = np.asarray(standard_base_excess_mmol_per_l, dtype=float)
+    excess = np.asarray(standard_base_excess_mmol_per_l, dtype=np.float64)
     hco3 = hco3_mmol_per_l(_NORMAL_PH, pco2_mmhg)
     return _ph_where(hco3, _ECF_BUFFER_MMOL_PER_L, excess + _NORMAL_HCO3_MMOL_PER_L)
 
@@ -212,13 +213,10 @@ def ph_at_whole_blood_base_excess(
     Examples
     --------
     >>> ph_at_whole_blood_base_excess([40.0, 46.0], 0.0, 15.0, [1.0, 0.75]).round(3)
-    array([7.4  , 7.373])
+    array([7.4  , 7.372])
     """
     plasma_share, buffer_value, from_oxygen = _lang_terms(hb_g_per_dl, so2)
-    hco3_at_normal_ph = (
-        _LANG_SOLUBILITY_MMOL_PER_L_MMHG
-        * np.asarray(pco2_mmhg, dtype=float)
-        * np.power(10.0, _NORMAL_PH - _LANG_PK)
-    )
-    excess = (np.asarray(base_excess_mmol_per_l, dtype=float) + from_oxygen) / plasma_share
+    dissolved = _LANG_SOLUBILITY_MMOL_PER_L_MMHG * np.asarray(pco2_mmhg, dtype=np.float64)
+    hco3_at_normal_ph = dissolved * np.power(10.0, _NORMAL_PH - _LANG_PK)
+    excess = (np.asarray(base_excess_mmol_per_l, dtype=np.float64) + from_oxygen) / plasma_share
     return _ph_where(hco3_at_normal_ph, buffer_value, excess + _LANG_NORMAL_HCO3_MMOL_PER_L)

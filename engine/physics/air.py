@@ -51,15 +51,15 @@ def water_vapour_mmhg(temperature_c: ArrayLike) -> Array:
 
     Notes
     -----
-    wagner1993, eq. 1: within 0.03 % of the measured line. Vapour pressure depends on temperature alone: it stays
-    47 mmHg in the airway on any mountain.
+    wagner1993, eq. 1: within 0.03 % of the measured line. Vapour pressure depends on temperature alone: it
+    stays 47 mmHg in the airway on any mountain.
 
     Examples
     --------
     >>> water_vapour_mmhg([20.0, 37.0]).round(2)
-    array([17.54, 47.12])
+    array([17.55, 47.12])
     """
-    kelvin = np.asarray(temperature_c, dtype=float) + ZERO_CELSIUS_K
+    kelvin = np.asarray(temperature_c, dtype=np.float64) + ZERO_CELSIUS_K
     tau = 1.0 - kelvin / _CRITICAL_K
     exponent = _CRITICAL_K / kelvin * sum(a * tau**power for power, a in _SATURATION_LINE)
     return _CRITICAL_MPA * _MMHG_PER_MPA * np.exp(exponent)
@@ -87,9 +87,9 @@ def barometric_mmhg_from_altitude(altitude_m: ArrayLike) -> Array:
     Examples
     --------
     >>> barometric_mmhg_from_altitude([0.0, 1609.0]).round(1)
-    array([760. , 625.9])
+    array([760. , 625.8])
     """
-    height = np.asarray(altitude_m, dtype=float)
+    height = np.asarray(altitude_m, dtype=np.float64)
     geopotential = _EARTH_RADIUS_M * height / (_EARTH_RADIUS_M + height)
     cooling = 1.0 - _LAPSE_K_PER_M * geopotential / _SEA_LEVEL_K
     return STANDARD_BAROMETRIC_MMHG * cooling**_PRESSURE_EXPONENT
@@ -120,8 +120,8 @@ def pio2_mmhg(
     >>> round(float(pio2_mmhg(0.21, 760.0)), 1)
     149.7
     """
-    dry_mmhg = np.asarray(barometric_mmhg, dtype=float) - np.asarray(water_vapour_mmhg, dtype=float)
-    return np.asarray(fio2, dtype=float) * dry_mmhg
+    dry_mmhg = np.asarray(barometric_mmhg, dtype=np.float64) - np.asarray(water_vapour_mmhg, dtype=np.float64)
+    return np.asarray(fio2, dtype=np.float64) * dry_mmhg
 
 
 def palvo2_mmhg(
@@ -159,9 +159,10 @@ def palvo2_mmhg(
     >>> palvo2_mmhg([0.21, 1.0], 760.0, 40.0).round(1)
     array([101.8, 673. ])
     """
-    inspired = np.asarray(fio2, dtype=float)
-    taken_up = inspired + (1.0 - inspired) / np.asarray(respiratory_quotient, dtype=float)
-    return pio2_mmhg(inspired, barometric_mmhg, water_vapour_mmhg) - np.asarray(paco2_mmhg, float) * taken_up
+    inspired = np.asarray(fio2, dtype=np.float64)
+    taken_up = inspired + (1.0 - inspired) / np.asarray(respiratory_quotient, dtype=np.float64)
+    paco2 = np.asarray(paco2_mmhg, dtype=np.float64)
+    return pio2_mmhg(inspired, barometric_mmhg, water_vapour_mmhg) - paco2 * taken_up
 
 
 def palvo2_simple_mmhg(
@@ -185,5 +186,5 @@ def palvo2_simple_mmhg(
     >>> palvo2_simple_mmhg([0.21, 1.0], 760.0, 40.0).round(1)
     array([ 99.7, 663. ])
     """
-    quotient = np.asarray(respiratory_quotient, dtype=float)
-    return pio2_mmhg(fio2, barometric_mmhg, water_vapour_mmhg) - np.asarray(paco2_mmhg, float) / quotient
+    quotient = np.asarray(respiratory_quotient, dtype=np.float64)
+    return pio2_mmhg(fio2, barometric_mmhg, water_vapour_mmhg) - np.asarray(paco2_mmhg, np.float64) / quotient

@@ -2,13 +2,15 @@
 
 References
 ----------
-douglas1988 : A. R. Douglas, N. L. Jones, J. W. Reed, "Calculation of whole blood CO2 content", J. Appl. Physiol.
-    65(1), 473-477, 1988.
-kelman1967 : G. R. Kelman, "Digital computer procedure for the conversion of PCO2 into blood CO2 content", Respir.
-    Physiol. 3(1), 111-115, 1967.
+douglas1988 : A. R. Douglas, N. L. Jones, J. W. Reed, "Calculation of whole blood CO2 content", J. Appl.
+    Physiol. 65(1), 473-477, 1988.
+kelman1967 : G. R. Kelman, "Digital computer procedure for the conversion of PCO2 into blood CO2 content",
+    Respir. Physiol. 3(1), 111-115, 1967.
 bohr1891 : C. Bohr, "Ueber die Lungenathmung", Skand. Arch. Physiol. 2, 236-268, 1891.
 enghoff1938 : H. Enghoff, "Volumen inefficax. Bemerkungen zur Frage des schaedlichen Raumes", Upsala
     Laekarefoeren. Foerh. 44, 191-218, 1938.
+bradley1956 : A. F. Bradley, M. Stupfel, J. W. Severinghaus, "Effect of temperature on PCO2 and PO2 of blood in
+    vitro", J. Appl. Physiol. 9(2), 201-204, 1956.
 """
 
 import numpy as np
@@ -26,7 +28,7 @@ CO2_CONSTANT = STANDARD_BAROMETRIC_MMHG * (ZERO_CELSIUS_K + _BODY_C) / ZERO_CELS
 alveolar gas. It does not depend on the barometric pressure as long as ventilation is BTPS."""
 
 _ML_STPD_PER_DL_FROM_MMOL_PER_L = 2.226  # douglas1988
-_LOG_PCO2_PER_C = 0.019  # common practice in blood gas analysers, no source
+_LOG_PCO2_PER_C = 0.019  # bradley1956 measured 4.4 % per degree; analysers use 0.019
 
 
 def co2_solubility_mmol_per_l_mmhg(temperature_c: ArrayLike = _BODY_C) -> Array:
@@ -51,7 +53,7 @@ def co2_solubility_mmol_per_l_mmhg(temperature_c: ArrayLike = _BODY_C) -> Array:
     >>> round(float(co2_solubility_mmol_per_l_mmhg(37.0)), 4)
     0.0307
     """
-    cooler_c = _BODY_C - np.asarray(temperature_c, dtype=float)
+    cooler_c = _BODY_C - np.asarray(temperature_c, dtype=np.float64)
     return 0.0307 + 0.00057 * cooler_c + 0.00002 * cooler_c * cooler_c
 
 
@@ -76,8 +78,9 @@ def co2_pk(ph: ArrayLike, temperature_c: ArrayLike = _BODY_C) -> Array:
     >>> round(float(co2_pk(7.40)), 4)
     6.0907
     """
-    acid = 7.4 - np.asarray(ph, dtype=float)
-    return 6.086 + 0.042 * acid + (38.0 - np.asarray(temperature_c, dtype=float)) * (0.00472 + 0.00139 * acid)
+    acid = 7.4 - np.asarray(ph, dtype=np.float64)
+    below_38_c = 38.0 - np.asarray(temperature_c, dtype=np.float64)
+    return 6.086 + 0.042 * acid + below_38_c * (0.00472 + 0.00139 * acid)
 
 
 def plasma_co2_content_ml_per_dl(
@@ -104,8 +107,8 @@ def plasma_co2_content_ml_per_dl(
     >>> round(float(plasma_co2_content_ml_per_dl(40.0, 7.40)), 1)
     58.5
     """
-    acidity = np.asarray(ph, dtype=float) - co2_pk(ph, temperature_c)
-    dissolved = co2_solubility_mmol_per_l_mmhg(temperature_c) * np.asarray(pco2_mmhg, dtype=float)
+    acidity = np.asarray(ph, dtype=np.float64) - co2_pk(ph, temperature_c)
+    dissolved = co2_solubility_mmol_per_l_mmhg(temperature_c) * np.asarray(pco2_mmhg, dtype=np.float64)
     return _ML_STPD_PER_DL_FROM_MMOL_PER_L * dissolved * (1.0 + np.power(10.0, acidity))
 
 
@@ -136,17 +139,18 @@ def co2_content_ml_per_dl(
 
     Notes
     -----
-    douglas1988. Measured within PCO2 25-85 mmHg, pH 7.12-7.51, Hb 13.7-19 g/dL, saturation 0.33-1.00: bias 0.02,
-    SD 1.19 mL/dL against 84 Van Slyke values. In anaemia it is an extrapolation, which tends to the plasma content
-    as haemoglobin vanishes. Differences are safer than levels (textbook 48 mL/dL in arterial blood, here 46.7).
+    douglas1988. Measured within PCO2 25-85 mmHg, pH 7.12-7.51, Hb 13.7-19 g/dL, saturation 0.33-1.00: bias
+    0.02, SD 1.19 mL/dL against 84 Van Slyke values. In anaemia it is an extrapolation, which tends to the
+    plasma content as haemoglobin vanishes. Differences are safer than levels (textbook 48 mL/dL in arterial
+    blood, here 46.7).
 
     Examples
     --------
     >>> co2_content_ml_per_dl([40.0, 46.0], [7.40, 7.37], 15.0, [0.975, 0.75]).round(1)
-    array([46.7, 51. ])
+    array([46.7, 51.1])
     """
-    cells = (3.352 - 0.456 * np.asarray(so2, dtype=float)) * (8.142 - np.asarray(ph, dtype=float))
-    share = 1.0 - 0.0289 * np.asarray(hb_g_per_dl, dtype=float) / cells
+    cells = (3.352 - 0.456 * np.asarray(so2, dtype=np.float64)) * (8.142 - np.asarray(ph, dtype=np.float64))
+    share = 1.0 - 0.0289 * np.asarray(hb_g_per_dl, dtype=np.float64) / cells
     return plasma_co2_content_ml_per_dl(pco2_mmhg, ph, temperature_c) * share
 
 
@@ -174,7 +178,8 @@ def alveolar_ventilation_l_per_min(vco2_ml_per_min: ArrayLike, paco2_mmhg: Array
     >>> round(float(alveolar_ventilation_l_per_min(200.0, 40.0)), 2)
     4.31
     """
-    return CO2_CONSTANT * np.asarray(vco2_ml_per_min, dtype=float) / np.asarray(paco2_mmhg, dtype=float)
+    vco2 = np.asarray(vco2_ml_per_min, dtype=np.float64)
+    return CO2_CONSTANT * vco2 / np.asarray(paco2_mmhg, dtype=np.float64)
 
 
 def paco2_from_ventilation_mmhg(
@@ -182,15 +187,15 @@ def paco2_from_ventilation_mmhg(
 ) -> Array:
     """Tension at which this ventilation (L BTPS per minute, > 0) clears this much CO2 (mL STPD per minute).
 
-    The inverse of `alveolar_ventilation_l_per_min`, in the steady state. Arguments broadcast; NaN in, NaN out.
+    The inverse of `alveolar_ventilation_l_per_min`, in the steady state. They broadcast; NaN in, NaN out.
 
     Examples
     --------
     >>> paco2_from_ventilation_mmhg(200.0, [4.31, 2.155]).round(0)
     array([40., 80.])
     """
-    ventilation = np.asarray(alveolar_ventilation_l_per_min, dtype=float)
-    return CO2_CONSTANT * np.asarray(vco2_ml_per_min, dtype=float) / ventilation
+    ventilation = np.asarray(alveolar_ventilation_l_per_min, dtype=np.float64)
+    return CO2_CONSTANT * np.asarray(vco2_ml_per_min, dtype=np.float64) / ventilation
 
 
 def bohr_dead_space(palvco2_mmhg: ArrayLike, pexpco2_mmhg: ArrayLike) -> Array:
@@ -217,8 +222,8 @@ def bohr_dead_space(palvco2_mmhg: ArrayLike, pexpco2_mmhg: ArrayLike) -> Array:
     >>> round(float(bohr_dead_space(40.0, 28.0)), 2)
     0.3
     """
-    alveolar = np.asarray(palvco2_mmhg, dtype=float)
-    return (alveolar - np.asarray(pexpco2_mmhg, dtype=float)) / alveolar
+    alveolar = np.asarray(palvco2_mmhg, dtype=np.float64)
+    return (alveolar - np.asarray(pexpco2_mmhg, dtype=np.float64)) / alveolar
 
 
 def enghoff_dead_space(paco2_mmhg: ArrayLike, pexpco2_mmhg: ArrayLike) -> Array:
@@ -262,12 +267,12 @@ def pco2_at_temperature_mmhg(pco2_mmhg_at_37: ArrayLike, temperature_c: ArrayLik
 
     Notes
     -----
-    P x 10^(0.019 (T - 37)), sealed sample (common practice in analysers).
+    P x 10^(0.019 (T - 37)), a sealed sample (bradley1956, as analysers round it).
 
     Examples
     --------
     >>> round(float(pco2_at_temperature_mmhg(40.0, 33.0)), 1)
     33.6
     """
-    warmer_c = np.asarray(temperature_c, dtype=float) - _BODY_C
-    return np.asarray(pco2_mmhg_at_37, dtype=float) * np.power(10.0, _LOG_PCO2_PER_C * warmer_c)
+    warmer_c = np.asarray(temperature_c, dtype=np.float64) - _BODY_C
+    return np.asarray(pco2_mmhg_at_37, dtype=np.float64) * np.power(10.0, _LOG_PCO2_PER_C * warmer_c)
