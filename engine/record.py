@@ -1,14 +1,13 @@
 """What is known about one patient. Units are in the names; fractions are 0-1; unmeasured is ``None``.
 
 A record refuses what cannot be (`Impossible`, a ``ValueError`` that names the field, the value and what was
-expected); what is merely doubtful is accepted and raises a check later (`engine.checks`). One quantity has one
-name everywhere, so one table, `POSSIBLE`, guards every record.
+expected); what is merely doubtful is accepted and raises a check later (`engine.checks`). One quantity has
+one name everywhere, so one table, `POSSIBLE`, guards every record.
 """
 
 from collections.abc import Iterator
 from dataclasses import dataclass, fields, replace
 from datetime import datetime
-from math import isfinite
 from typing import Any, Self
 
 # Beyond these a value is a slip of the keyboard, not a sick patient. Common practice, no source.
@@ -107,7 +106,10 @@ class Impossible(ValueError):
 
     def __init__(self, field: str, value: object, expected: str) -> None:
         self.field, self.value, self.expected = field, value, expected
-        super().__init__(f"{field} = {value!r} is impossible: expected {expected}")
+        super().__init__(field, value, expected)  # as given, so that it crosses from one process to another
+
+    def __str__(self) -> str:
+        return f"{self.field} = {self.value!r} is impossible: expected {self.expected}"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -134,7 +136,7 @@ def _refuse_impossible_number(name: str, value: object) -> None:
     expected = f"a number from {low:g} to {high:g}"
     if isinstance(value, bool) or not isinstance(value, int | float):
         raise Impossible(name, value, expected)
-    if not (isfinite(value) and low <= value <= high):
+    if not low <= value <= high:  # NaN fails this too
         raise Impossible(name, value, expected)
 
 
@@ -292,12 +294,19 @@ class BloodGas(_Guarded):
         if self.temperature_corrected and self.temperature_c is None:
             raise Impossible("temperature_c", None, "the temperature the gas was corrected to")
         if self.drawn_at is not None:
-            _refuse_time_without_zone("drawn_at", self.drawn_at)
+            _refuse_unclear_time("drawn_at", self.drawn_at)
+        if self.excluded is not None and not self.excluded.strip():
+            raise Impossible("excluded", self.excluded, "the reason as text")
+        if (self.cohb or 0) + (self.methb or 0) >= 1:
+            raise Impossible("methb", self.methb, "less than 1 together with cohb")
 
 
-def _refuse_time_without_zone(name: str, time: datetime) -> None:
-    if time.tzinfo is None:
+def _refuse_unclear_time(name: str, time: datetime) -> None:
+    """A time needs a zone, and a year in which every zone and every table can hold it."""
+    if time.utcoffset() is None:
         raise Impossible(name, time.isoformat(), "a time with a zone, such as 2031-03-04T07:40:00Z")
+    if not 1900 <= time.year <= 2250:
+        raise Impossible(name, time.isoformat(), "a year from 1900 to 2250")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -314,8 +323,11 @@ class Entry(_Guarded):
 
     def __post_init__(self) -> None:
         _Guarded.__post_init__(self)
-        _refuse_time_without_zone("time", self.time)
+        _refuse_unclear_time("time", self.time)
         _refuse_unknown_words("events", self.events, EVENTS)
+        if self.gas_time > self.time:
+            expected = f"no later than the entry that charts it, {self.time.isoformat()}"
+            raise Impossible("gas.drawn_at", self.gas_time.isoformat(), expected)
 
     @property
     def gas_time(self) -> datetime:
@@ -339,8 +351,11 @@ class Case:
         for number, (earlier, later) in enumerate(zip(self.entries, self.entries[1:], strict=False), start=2):
             if later.time <= earlier.time:
                 raise Impossible(
-                    f"entries[{number}].time", later.time.isoformat(), f"a time after {earlier.time.isoformat()}"
+                    f"entries[{number}].time",
+                    later.time.isoformat(),
+                    f"a time after {earlier.time.isoformat()}",
                 )
+        _refuse_gases_out_of_order(self.entries)
         for number, (entry, settings) in enumerate(self.entries_with_settings(), start=1):
             if entry.gas is not None:
                 _refuse_gas_without_settings(f"entries[{number}].settings", settings, self, number)
@@ -357,7 +372,10 @@ class Case:
         return replace(self, entries=self.entries[:number])
 
     def usable_gases(self) -> tuple[int, ...]:
-        """Numbers (from 0) of the entries whose gas can be used: arterial, not excluded, no extracorporeal support."""
+        """Numbers (from 0) of the entries whose gas can be used.
+
+        Usable is arterial, not excluded and not under extracorporeal support.
+        """
         numbers, supported = [], "extracorporeal" in self.patient.conditions
         for number, entry in enumerate(self.entries):
             if "extracorporeal_start" in entry.events:
@@ -380,13 +398,28 @@ class Case:
         return supported
 
 
+def _refuse_gases_out_of_order(entries: tuple[Entry, ...]) -> None:
+    """Arterial gases follow each other in the order they were drawn, and none stands twice."""
+    last: datetime | None = None
+    for number, entry in enumerate(entries, start=1):
+        if entry.gas is None or entry.gas.specimen != "arterial" or entry.gas.excluded:
+            continue
+        if last is not None and entry.gas_time <= last:
+            expected = f"a time after the arterial gas before it, {last.isoformat()}"
+            raise Impossible(f"entries[{number}].gas.drawn_at", entry.gas_time.isoformat(), expected)
+        last = entry.gas_time
+
+
 def _refuse_gas_without_settings(where: str, settings: Settings, case: Case, number: int) -> None:
-    """A gas needs mode, FiO2, rate and a tidal volume (set, or exhaled up to then) in force."""
+    """A gas needs mode, FiO2, rate and a tidal volume in force: set, or exhaled where no volume is set."""
     for name in ("mode", "fio2", "rate_per_min"):
         if getattr(settings, name) is None:
             raise Impossible(f"{where}.{name}", None, "a value in force at this gas")
     exhaled = any(e.measured and e.measured.exhaled_tidal_volume_ml for e in case.entries[:number])
-    if settings.tidal_volume_ml is None and not exhaled:
-        raise Impossible(f"{where}.tidal_volume_ml", None, "a tidal volume in force, set or exhaled")
+    if settings.tidal_volume_ml is None and (settings.mode == "volume" or not exhaled):
+        expected = (
+            "a set tidal volume in force" if settings.mode == "volume" else "one in force, set or exhaled"
+        )
+        raise Impossible(f"{where}.tidal_volume_ml", None, expected)
     if settings.rate_per_min == 0 and settings.mode != "support":
         raise Impossible(f"{where}.rate_per_min", 0, "more than 0 outside support mode")
