@@ -325,9 +325,6 @@ class Entry(_Guarded):
         _Guarded.__post_init__(self)
         _refuse_unclear_time("time", self.time)
         _refuse_unknown_words("events", self.events, EVENTS)
-        if self.gas_time > self.time:
-            expected = f"no later than the entry that charts it, {self.time.isoformat()}"
-            raise Impossible("gas.drawn_at", self.gas_time.isoformat(), expected)
 
     @property
     def gas_time(self) -> datetime:
