@@ -5,25 +5,34 @@ never acted on.
 """
 
 import json
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from difflib import get_close_matches
 
 from engine.record import CHOICES, CONDITIONS, EVENTS, POSSIBLE
+from engine.units import (
+    c_from_fahrenheit,
+    fraction_from_percent,
+    g_per_dl_from_g_per_l,
+    l_from_ml,
+    ml_from_l,
+    mmhg_from_hpa,
+    mmhg_from_kpa,
+)
 
 LONGEST_VALUE = 40  # characters of a value that a message quotes
 
-# Units typed by habit: ending of the field's name -> (that unit, its size in the unit of the field).
-_HABITS: dict[str, tuple[tuple[str, float], ...]] = {
-    "barometric_mmhg": (("hPa", 0.750062), ("kPa", 7.50062)),
-    "_mmhg": (("kPa", 7.50062),),
-    "hb_g_per_dl": (("g/L", 0.1),),
-    "_ml_per_min": (("L/min", 1000.0),),
-    "_l_per_min": (("mL/min", 0.001),),
-    "_ml": (("L", 1000.0),),
-    "_cm": (("m", 100.0),),
-    "_s": (("ms", 0.001),),
+# Units typed by habit: ending of the field's name -> that unit, and how to the unit of the field.
+_Habits = tuple[tuple[str, Callable[[float], float]], ...]
+_HABITS: dict[str, _Habits] = {
+    "barometric_mmhg": (("hPa", mmhg_from_hpa), ("kPa", mmhg_from_kpa)),
+    "_mmhg": (("kPa", mmhg_from_kpa),),
+    "hb_g_per_dl": (("g/L", g_per_dl_from_g_per_l),),
+    "_ml_per_min": (("L/min", ml_from_l),),
+    "_l_per_min": (("mL/min", l_from_ml),),
+    "_ml": (("L", ml_from_l),),
+    "temperature_c": (("°F", c_from_fahrenheit),),
 }
-_HABIT_OF_FRACTIONS = (("per cent", 0.01),)
+_HABIT_OF_FRACTIONS: _Habits = (("per cent", fraction_from_percent),)
 
 
 def one_line(text: str) -> str:
@@ -86,7 +95,7 @@ def _lost_point(field: str, value: float) -> str:
 def _other_unit(field: str, value: float) -> str:
     low, high = POSSIBLE[field]
     by_name = next((habits for ending, habits in _HABITS.items() if field.endswith(ending)), ())
-    for unit, size in _HABIT_OF_FRACTIONS if high <= 1 else by_name:
-        if low <= value * size <= high:
-            return f"{unit} is never used in case files, {quoted(value)} {unit} is {value * size:.3g}"
+    for unit, converted in _HABIT_OF_FRACTIONS if high <= 1 else by_name:
+        if low <= converted(value) <= high:
+            return f"{unit} is never used in case files, {quoted(value)} {unit} is {converted(value):.3g}"
     return ""
