@@ -9,8 +9,8 @@ kelman1967 : G. R. Kelman, "Digital computer procedure for the conversion of PCO
 bohr1891 : C. Bohr, "Ueber die Lungenathmung", Skand. Arch. Physiol. 2, 236-268, 1891.
 enghoff1938 : H. Enghoff, "Volumen inefficax. Bemerkungen zur Frage des schaedlichen Raumes", Upsala
     Laekarefoeren. Foerh. 44, 191-218, 1938.
-bradley1956 : A. F. Bradley, M. Stupfel, J. W. Severinghaus, "Effect of temperature on PCO2 and PO2 of blood in
-    vitro", J. Appl. Physiol. 9(2), 201-204, 1956.
+bradley1956 : A. F. Bradley, M. Stupfel, J. W. Severinghaus, "Effect of temperature on PCO2 and PO2 of blood
+    in vitro", J. Appl. Physiol. 9(2), 201-204, 1956.
 """
 
 import numpy as np

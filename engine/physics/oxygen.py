@@ -116,9 +116,9 @@ def po2_from_so2(so2: ArrayLike) -> Array:
     """
     s = np.asarray(so2, dtype=np.float64)
     with np.errstate(divide="ignore", invalid="ignore"):
-        b: Array = np.where((s >= 0.0) & (s <= 1.0), 0.5 * _CUBE_MMHG3 * s / (1.0 - s), np.nan)
+        b = np.where((s >= 0.0) & (s <= 1.0), 0.5 * _CUBE_MMHG3 * s / (1.0 - s), np.nan)
     a = _LINEAR_MMHG2 / 3.0
-    larger = np.cbrt(np.hypot(a**1.5, b) + b)
+    larger: Array = np.cbrt(np.hypot(a**1.5, b) + b)
     return larger - a / larger
 
 
