@@ -1,0 +1,47 @@
+"""Engine calls remembered for one browser session: the only caching there is.
+
+Nothing of one session reaches another (``scope="session"``), and little is kept (``max_entries``). A case is told from
+another by its full text, never by a sample of it.
+"""
+
+from collections.abc import Mapping
+
+import streamlit as st
+
+from engine import forecast as forecasting
+from engine.checks import Check, checks_for
+from engine.estimates import Estimate, estimates_for
+from engine.fit import Fit, fit
+from engine.forecast import Forecast
+from engine.record import Case
+
+_BY_TEXT = {Case: repr}
+_Change = tuple[tuple[str, object], ...]
+
+
+@st.cache_resource(scope="session", max_entries=4, show_spinner=False, hash_funcs=_BY_TEXT)
+def fitted(case: Case) -> Fit:
+    """`engine.fit.fit` with the charted changes read as `seen`; some seconds for a long stay."""
+    return fit(case)
+
+
+@st.cache_resource(scope="session", max_entries=50, show_spinner=False, hash_funcs=_BY_TEXT)
+def _forecast(case: Case, change: _Change, effort_stops: bool) -> Forecast:
+    return forecasting.forecast(fitted(case), dict(change), effort_stops=effort_stops)
+
+
+def forecast(case: Case, change: Mapping[str, object], *, effort_stops: bool) -> Forecast:
+    """`engine.forecast.forecast` of the settled gas after ``change``."""
+    return _forecast(case, tuple(sorted(change.items())), effort_stops)
+
+
+@st.cache_resource(scope="session", max_entries=8, show_spinner=False, hash_funcs=_BY_TEXT)
+def checks(case: Case) -> tuple[Check, ...]:
+    """`engine.checks.checks_for`."""
+    return checks_for(case)
+
+
+@st.cache_resource(scope="session", max_entries=64, show_spinner=False, hash_funcs=_BY_TEXT)
+def estimates(case: Case, number: int) -> tuple[Estimate, ...]:
+    """`engine.estimates.estimates_for`."""
+    return estimates_for(case, number)

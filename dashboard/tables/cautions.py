@@ -1,0 +1,58 @@
+"""What to bear in mind: the change as it was used, when to look again, cautions and doubtful input."""
+
+from collections.abc import Sequence
+from datetime import datetime
+from html import escape
+
+from dashboard.wording import change_text, clock_after, clock_text, span_text
+from engine.checks import Check
+from engine.forecast import Forecast
+
+
+def tried_line(forecast: Forecast, effort_stops: bool, now: datetime) -> str:
+    """The values that the forecast was really made with, and what it takes for granted."""
+    changes = [change_text(name, *ends) for name, ends in forecast.changed.items()]
+    if effort_stops:
+        changes.append("breathing effort stops")
+    words = "; ".join(changes) if changes else "nothing; all as charted"
+    return (
+        f'<p class="fb-tried"><b>Tried:</b> {escape(words)}. '
+        f"<span>Assumes that nothing else has changed since the gas at {clock_text(forecast.made_from, now)}.</span></p>"
+    )
+
+
+def recheck_lines(forecast: Forecast, now: datetime) -> str:
+    """The two times to look again, counted from a change made now."""
+    recheck, lines = forecast.recheck, []
+    for minutes, what in (
+        (recheck.early_minutes, "Early look: right way, safe?"),
+        (recheck.settled_minutes, "Settled gas"),
+    ):
+        if minutes is not None:
+            lines.append(
+                f"<li><b>{clock_after(now, minutes)}</b> {what} <small>after {span_text(minutes)}</small></li>"
+            )
+    body = f"<ul>{''.join(lines)}</ul>" if lines else ""
+    return (
+        f'<div class="fb-recheck"><h3>Look again <small>if changed now, {clock_text(now, now)}</small></h3>'
+        f"{body}<p>{escape(recheck.reason)}</p></div>"
+    )
+
+
+def cautions_list(forecast: Forecast) -> str:
+    """Every caution of the forecast, in its own order."""
+    if not forecast.cautions:
+        return ""
+    lines = "".join(f"<li>{escape(text)}</li>" for text in forecast.cautions)
+    return f'<div class="fb-cautions"><h3>Cautions</h3><ul>{lines}</ul></div>'
+
+
+def checks_list(checks: Sequence[Check]) -> str:
+    """The checks that are not passed; the passed ones stay out of the way."""
+    doubtful = [check for check in checks if check.ok is False]
+    if not doubtful:
+        return ""
+    lines = "".join(
+        f"<li>{escape(check.says)} <small>{escape(check.source)}</small></li>" for check in doubtful
+    )
+    return f'<div class="fb-checks"><h3>Doubtful in the chart</h3><ul>{lines}</ul></div>'

@@ -1,0 +1,188 @@
+"""Bed: one patient's gases so far, and what the next one will probably read if something is changed."""
+
+from datetime import datetime
+
+import streamlit as st
+
+from dashboard import cached, live, session
+from dashboard.charts.plane import plane
+from dashboard.session import Bed, Held
+from dashboard.tables.cautions import cautions_list, checks_list, recheck_lines, tried_line
+from dashboard.tables.expected import expected_table, in_words
+from dashboard.tables.gases import gases_table
+from dashboard.tables.limits import limits_table, nearest_limit
+from dashboard.tables.who import who_line
+from dashboard.wording import FIELDS, SAFETY, SETTING_LABELS, Field, fields_to_try, setting_text, zone_text
+from engine.fit import NothingToSay
+from engine.forecast import Forecast
+from engine.reading.case_file import text_from_case
+from engine.record import CHOICES, Case, Impossible
+
+PICTURE_HEIGHT_PX = 418
+
+
+def show() -> None:
+    """One patient, one change, one forecast."""
+    state, now = session.bed(), session.now()
+    with st.container(key="top", horizontal=True, vertical_alignment="center"):
+        _who()
+        _choices(state)
+    held = state.in_hand
+    if held is None:
+        st.info("No patient in hand. Choose a demo patient or open a case file above.")
+    else:
+        trial, result = st.columns([27, 100], gap="medium")
+        with trial, st.container(key="trial"):
+            _trial(state, held.case)
+        with result:
+            _result(state, held.case, now)
+    st.html(f'<div class="fb-safety">{SAFETY}</div>')
+
+
+# ----------------------------------------------------------------------------------------------------- top of the page
+
+
+@st.fragment(run_every="60s")
+def _who() -> None:
+    """Ages go on counting while the screen stands untouched."""
+    held = session.bed().in_hand
+    if held is not None:
+        st.html(who_line(held.case, held.demo, session.now()))
+
+
+def _choices(state: Bed) -> None:
+    options = session.patient_options()
+    st.selectbox(
+        "Patient",
+        list(options),
+        format_func=lambda key: options.get(key, key),
+        key="patient",
+        on_change=session.choose_patient,
+        label_visibility="collapsed",
+        width=230,
+    )
+    with st.popover("File", key="file"):
+        _file(state)
+    with st.popover("Units", key="units"):
+        _units(state)
+
+
+def _file(state: Bed) -> None:
+    st.file_uploader(
+        "Open a case file", type=["json"], key=session.upload_key(), on_change=session.take_upload, max_upload_size=5
+    )
+    if state.in_hand is not None:
+        st.download_button(
+            "Save this case as a file",
+            data=_download(state.in_hand),
+            file_name="case.json",
+            mime="application/json",
+            on_click="ignore",
+        )
+
+
+def _download(held: Held) -> str:
+    return text_from_case(held.case)
+
+
+def _units(state: Bed) -> None:
+    for label, key, chosen, choices in (
+        ("Gas tensions", "unit_gas", state.units.gas, ["mmHg", "kPa"]),
+        ("Haemoglobin", "unit_haemoglobin", state.units.haemoglobin, ["g/dL", "g/L"]),
+    ):
+        st.segmented_control(
+            label, choices, default=chosen, key=key, on_change=session.choose_units, required=True
+        )
+
+
+# ------------------------------------------------------------------------------------------------------ try a change
+
+
+def _trial(state: Bed, case: Case) -> None:
+    st.html('<h2 class="fb-heading">Try a change</h2>')
+    for field in fields_to_try(session.charted()):
+        _number(state, field)
+    st.segmented_control(
+        SETTING_LABELS["humidifier"],
+        CHOICES["humidifier"],
+        key=session.field_key("humidifier"),
+        on_change=session.choose_humidifier,
+    )
+    st.toggle("If breathing effort stops", key="effort_stops", on_change=session.toggle_effort)
+    with st.container(horizontal=True, key="steps"):
+        st.button("Undo", key="undo", on_click=session.undo, disabled=not state.earlier)
+        st.button("As charted", key="as_charted", on_click=session.as_charted, disabled=not session.tries_something())
+
+
+def _number(state: Bed, field: Field) -> None:
+    with st.container(horizontal=True, vertical_alignment="bottom", key=f"field_{field.name}", gap="xxsmall"):
+        st.text_input(
+            f"{field.label}{', ' + field.unit if field.unit else ''}",
+            key=session.field_key(field.name),
+            on_change=session.type_number,
+            args=(field.name,),
+        )
+        for sign, direction in (("−", -1), ("+", 1)):
+            st.button(
+                sign,
+                key=f"step_{field.name}_{direction:+d}",
+                on_click=session.step_number,
+                args=(field.name, direction),
+                help=None,
+            )
+    if field.name in state.refused:
+        used = setting_text(field.name, session.in_use(field.name))
+        st.html(f'<div class="fb-refused" role="alert">{state.refused[field.name]} Still using {used}.</div>')
+
+
+# ----------------------------------------------------------------------------------------------------------- the result
+
+
+def _result(state: Bed, case: Case, now: datetime) -> None:
+    if state.upload_says is not None:
+        good, says = state.upload_says
+        (st.success if good else st.error)(says if good else f"File not opened, nothing changed. {says}")
+    forecast = _forecast(state, case)
+    if forecast is not None:
+        st.html(expected_table(case, forecast, state.units, now))
+        st.html(tried_line(forecast, state.effort_stops, now))
+    picture, beside = st.columns([60, 40], gap="medium")
+    with picture:
+        live.draw(
+            plane(case, forecast, state.units, now),
+            key="plane",
+            alt=in_words(forecast, state.units),
+            height_px=PICTURE_HEIGHT_PX,
+        )
+    with beside:
+        if forecast is not None:
+            st.html(nearest_limit(forecast.limits))
+            st.html(recheck_lines(forecast, now))
+            _show(cautions_list(forecast))
+        _show(checks_list(cached.checks(case)))
+    if forecast is not None:
+        st.html('<h2 class="fb-heading">Limits</h2>' + limits_table(forecast.limits))
+    zone = zone_text(now.tzinfo, now)
+    st.html(
+        f'<h2 class="fb-heading">Gases so far</h2><p class="fb-note">Clock times in {zone}.</p>'
+        + gases_table(case, lambda number: cached.estimates(case, number), state.units, now)
+    )
+
+
+def _show(text: str) -> None:
+    if text:
+        st.html(text)
+
+
+def _forecast(state: Bed, case: Case) -> Forecast | None:
+    """The forecast of what is being tried, or the reason for none on the screen."""
+    gases = len(case.usable_gases())
+    try:
+        with st.spinner(f"Reading {gases} gases of this stay. The first look at a patient takes some seconds."):
+            return cached.forecast(case, state.tried, effort_stops=state.effort_stops)
+    except NothingToSay as why:
+        st.warning(f"No forecast: {why}")
+    except Impossible as why:
+        label = FIELDS[why.field].label if why.field in FIELDS else why.field
+        st.warning(f"No forecast of this change: {label} {why.value} cannot be; expected {why.expected}.")
+    return None
