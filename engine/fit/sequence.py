@@ -1,0 +1,241 @@
+"""The belief about a lung, carried from gas to gas.
+
+Between two gases it drifts (`engine.lung.drift`); each gas narrows it (`engine.fit.tempering`). A new gas updates the
+draws and refits nothing. The same seed gives the same draws.
+"""
+
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+from datetime import datetime, timedelta
+
+import numpy as np
+from numpy.typing import NDArray
+
+from engine.fit.observation import Observed, carrying_hb_g_per_dl, gas_at_37
+from engine.fit.tempering import Tempered, temper
+from engine.lung.arterial import arterial_gas, ventilation
+from engine.lung.breathing import Breathing, breathing_at, measured_value
+from engine.lung.drift import READ_AS, drift_between, heavy_tail
+from engine.lung.prior import PARAMETERS, Belief, Prior, prior_of
+from engine.lung.settling import gas_on_the_way, settled_gas
+from engine.physics.acid_base import standard_base_excess_mmol_per_l
+from engine.physics.air import STANDARD_BAROMETRIC_MMHG, barometric_mmhg_from_altitude
+from engine.record import Case, Settings, Site
+
+Array = NDArray[np.float64]
+Rows = NDArray[np.int64]
+
+DRAWS = 2000
+FIT_UNITS = 11  # V/Q nodes while fitting: within 0.02 % of PaO2 in the median lung, far below scatter
+SETTLED_AFTER = timedelta(hours=2)  # 90 % of a PaCO2 change at an alveolar ventilation of 2.5 L/min takes 89 min
+NEARBY = timedelta(hours=1)  # a cardiac output, VO2, VCO2 or SvO2 this old still belongs to the gas
+STANDARD_WEIGHT_KG = 70.0
+
+
+class NothingToSay(ValueError):
+    """There is no usable gas to learn from; says why."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class Fit:
+    """The belief after the last usable gas of a case, and what a forecast needs beside it.
+
+    ``surprise`` is, for each gas so far, its log density under the belief before it; ``distinct`` the number of
+    ancestors left of the draws at the last gas.
+    """
+
+    case: Case
+    seed: int
+    read_as: str
+    belief: Belief
+    reference: Breathing
+    gas_number: int
+    hb_g_per_dl: float
+    barometric_mmhg: float
+    surprise: tuple[float, ...]
+    distinct: int
+
+    @property
+    def gas_time(self) -> datetime:
+        """When the last usable gas was drawn."""
+        return self.case.entries[self.gas_number].gas_time
+
+
+def fit(case: Case, *, seed: int = 1, draws: int = DRAWS, read_as: str = "seen") -> Fit:
+    """The belief after all usable gases of ``case``.
+
+    Parameters
+    ----------
+    case : Case
+    seed : int
+        Same seed, same draws.
+    draws : int
+    read_as : str
+        ``seen``: charted changes of FiO2 are evidence about the lung. ``done``: they are not.
+
+    Raises
+    ------
+    NothingToSay
+        If no gas of the case can be used.
+    """
+    last = None
+    for last in fits_along(case, seed=seed, draws=draws, read_as=read_as):
+        pass
+    if last is None:
+        raise NothingToSay(_why_nothing(case))
+    return last
+
+
+def _why_nothing(case: Case) -> str:
+    gases = [e.gas for e in case.entries if e.gas is not None]
+    if not gases:
+        return "there is no blood gas in this case yet"
+    return "no gas of this case can be used: each is venous, capillary, excluded or under extracorporeal support"
+
+
+def barometric_mmhg(site: Site) -> float:
+    """Station pressure where measured, else by altitude, else 760."""
+    if site.barometric_mmhg is not None:
+        return site.barometric_mmhg
+    if site.altitude_m is not None:
+        return float(barometric_mmhg_from_altitude(site.altitude_m))
+    return STANDARD_BAROMETRIC_MMHG
+
+
+def fits_along(case: Case, *, seed: int = 1, draws: int = DRAWS, read_as: str = "seen") -> Iterator[Fit]:
+    """The belief after each usable gas in turn; each `Fit` holds the case up to and with that gas's entry."""
+    if read_as not in READ_AS:
+        raise ValueError(f"read_as = {read_as!r}: expected one of {', '.join(READ_AS)}")
+    rng, now = np.random.default_rng(seed), None
+    for number in case.usable_gases():
+        now = _after_gas(case.before(number + 1), number, now, rng, seed, draws, read_as)
+        yield now
+
+
+def _after_gas(
+    case: Case,
+    number: int,
+    last: Fit | None,
+    rng: np.random.Generator,
+    seed: int,
+    draws: int,
+    read_as: str,
+) -> Fit:
+    gas, time = case.entries[number].gas, case.entries[number].gas_time
+    assert gas is not None  # a usable gas
+    observed, hb, pressure = _observed(case, number, time), carrying_hb_g_per_dl(gas), barometric_mmhg(case.site)
+    situation = _situation(case, number, time)
+    if last is None:
+        reference = situation.breathing
+        excess = float(standard_base_excess_mmol_per_l(observed.ph, observed.paco2_mmhg))
+        before, centre, width = _from_prior(prior_of(case.patient, reference, excess), rng, draws)
+    else:
+        reference = last.reference
+        before, centre, width = _from_last(last, case, number, time, rng, read_as)
+    weight_kg = case.patient.weight_kg or STANDARD_WEIGHT_KG
+    obstructive = "obstructive" in case.patient.conditions
+
+    def drawn(e: Array, rows: Rows) -> Belief:
+        values = centre[rows] + width[rows] * e
+        return Belief(values, before.active[rows], before.own[rows])
+
+    def log_likelihood(e: Array, rows: Rows) -> Array:
+        belief = drawn(e, rows)
+        shared = {"hb_g_per_dl": hb, "barometric_mmhg": pressure}
+        exchange = arterial_gas(belief, situation.breathing, reference, units=FIT_UNITS, **shared)
+        if situation.was is None:
+            return observed.log_likelihood(belief, settled_gas(exchange), exchange)
+        was = arterial_gas(belief, situation.was, reference, units=FIT_UNITS, **shared)
+        unsettled = gas_on_the_way(
+            belief,
+            was,
+            exchange,
+            situation.minutes,
+            alveolar_l_per_min=ventilation(belief, situation.breathing).alveolar_l_per_min,
+            weight_kg=weight_kg,
+            obstructive=obstructive,
+        )
+        return observed.log_likelihood(belief, unsettled, exchange)
+
+    found: Tempered = temper(log_likelihood, draws, len(PARAMETERS), rng)
+    return Fit(
+        case=case,
+        seed=seed,
+        read_as=read_as,
+        belief=drawn(found.innovations, found.rows),
+        reference=reference,
+        gas_number=number,
+        hb_g_per_dl=hb,
+        barometric_mmhg=pressure,
+        surprise=(*(last.surprise if last else ()), found.log_evidence),
+        distinct=found.distinct,
+    )
+
+
+def _from_prior(prior: Prior, rng: np.random.Generator, draws: int) -> tuple[Belief, Array, Array]:
+    shape = (draws, len(PARAMETERS))
+    active = rng.permutation(np.arange(draws) < round(prior.active * draws))
+    own = (rng.permutation(draws) + 0.5) / draws
+    centre, width = np.broadcast_to(prior.centre, shape), np.broadcast_to(prior.width, shape)
+    return Belief(np.array(centre), active, own), centre, width
+
+
+def _from_last(
+    last: Fit, case: Case, number: int, time: datetime, rng: np.random.Generator, read_as: str
+) -> tuple[Belief, Array, Array]:
+    since = case.entries[last.gas_number + 1 : number + 1]
+    hours = max((time - last.gas_time) / timedelta(hours=1), 0.0)
+    in_force = settings_at(case, last.gas_number)
+    tail = heavy_tail(rng, len(last.belief))
+    drift = drift_between(last.belief, since, in_force, hours, tail, read_as=read_as)
+    return last.belief, last.belief.values + drift.shift, drift.sd
+
+
+def settings_at(case: Case, number: int) -> Settings:
+    """Settings in force from entry ``number`` on."""
+    in_force = Settings()
+    for entry in case.entries[: number + 1]:
+        in_force = in_force.then(entry.settings)
+    return in_force
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Situation:
+    """Breathing when a gas was drawn; and, where a dated change lies too close, what it was before and how long ago."""
+
+    breathing: Breathing
+    was: Breathing | None
+    minutes: float
+
+
+def _situation(case: Case, number: int, time: datetime) -> _Situation:
+    """A change that first appears with the gas has no date of its own and is taken as settled."""
+    breathing = breathing_at(case, settings_at(case, number), time)
+    for change in range(number - 1, 0, -1):
+        entry = case.entries[change]
+        if time - entry.time > SETTLED_AFTER or entry.gas is not None:
+            break
+        was, now = settings_at(case, change - 1), settings_at(case, change)
+        if was.rate_per_min is not None and was.fio2 is not None and was.differing(now):
+            return _Situation(
+                breathing=breathing,
+                was=breathing_at(case, was, time),
+                minutes=(time - entry.time) / timedelta(minutes=1),
+            )
+    return _Situation(breathing=breathing, was=None, minutes=np.inf)
+
+
+def _observed(case: Case, number: int, time: datetime) -> Observed:
+    gas = case.entries[number].gas
+    assert gas is not None  # a usable gas
+    ph, paco2, pao2 = gas_at_37(gas)
+    beside = {
+        field: measured_value(case, field, time, NEARBY)
+        for field in ("vco2_ml_per_min", "vo2_ml_per_min", "cardiac_output_l_per_min", "svo2")
+    }
+    return Observed(ph=ph, paco2_mmhg=paco2, pao2_mmhg=pao2, sao2=gas.sao2, **beside)
+
+
+def up_to(fit: Fit, case: Case) -> Fit:
+    """The same belief, with later entries of the case charted but no later gas: what stood before a change."""
+    return replace(fit, case=case)

@@ -1,0 +1,99 @@
+"""Which arterial gas a belief gives under a breathing, once settled.
+
+Dead space has a series part, in mL a breath, and an alveolar part, a fraction of what passes it (`ventilation.md`'s
+two-part form; fletcher1984, haudebourg2022). Below a tidal volume of about 1.5 times the series dead space the series
+part gives way (nunn1960: it shrinks with volumes under 350 mL), smoothly here, and no forecast is shown on a screen.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from engine.lung.breathing import Breathing
+from engine.lung.prior import Belief, logistic
+from engine.physics.exchange import Exchange, steady_state
+
+Array = NDArray[np.float64]
+
+LARGEST_SERIES_SHARE = 0.75  # of a breath: above it some alveolar ventilation persists (briscoe1954)
+OWN_RATE_SPREAD = 0.05  # ln SD of a patient's own rate about the one charted
+OWN_RATE_LEAST = 0.6  # an active patient who does not trigger breathes at this share of the set rate, or more
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Ventilation:
+    """Total rate, series dead space and alveolar ventilation (before alveolar dead space), each (draws,)."""
+
+    rate_per_min: Array
+    series_ml: Array
+    alveolar_l_per_min: Array
+
+
+def ventilation(belief: Belief, breathing: Breathing, *, effort_stops: bool = False) -> Ventilation:
+    """How each draw is ventilated: the larger of the set rate and the patient's own, series dead space taken off."""
+    rate = np.full(len(belief), breathing.set_rate_per_min)
+    if not effort_stops:
+        rate = np.maximum(rate, _own_rate(belief, breathing))
+    whole = (
+        np.exp(belief.of("ln_series_ml")) + belief.of("apparatus_share") * breathing.apparatus_dead_space_ml
+    )
+    most = LARGEST_SERIES_SHARE * breathing.tidal_volume_ml
+    series = whole / (1.0 + (whole / most) ** 6) ** (1.0 / 6.0)
+    return Ventilation(rate, series, np.maximum(rate, 0.5) * (breathing.tidal_volume_ml - series) / 1000.0)
+
+
+def _own_rate(belief: Belief, breathing: Breathing) -> Array:
+    own, spread = breathing.own_rate, np.exp(OWN_RATE_SPREAD * 2.0 * (belief.own - 0.5))
+    if own.per_min is not None:
+        return own.per_min * spread
+    return np.where(belief.active, own.at_most_per_min * (OWN_RATE_LEAST + (1.0 - OWN_RATE_LEAST) * belief.own), 0.0)
+
+
+def arterial_gas(
+    belief: Belief,
+    breathing: Breathing,
+    reference: Breathing,
+    *,
+    hb_g_per_dl: float,
+    barometric_mmhg: float,
+    units: int,
+    stopping: Breathing | None = None,
+) -> Exchange:
+    """The settled arterial gas of every draw.
+
+    Parameters
+    ----------
+    belief : Belief
+    breathing : Breathing
+        Now, or as tried.
+    reference : Breathing
+        At the first gas: a patient who defends a PaCO2 takes back the share `Belief.defence` of what ventilation moved
+        since then.
+    hb_g_per_dl : float
+        Haemoglobin that can carry oxygen.
+    barometric_mmhg : float
+    units : int
+        Of `steady_state`.
+    stopping : Breathing, optional
+        The breathing from which effort stops: ``breathing`` is then delivered by the ventilator alone.
+    """
+    now = ventilation(belief, breathing, effort_stops=stopping is not None)
+    defended_from = now if stopping is None else ventilation(belief, stopping)
+    usual = ventilation(belief, reference)
+    taken_back = belief.defence() * np.log(usual.alveolar_l_per_min / defended_from.alveolar_l_per_min)
+    vco2 = np.exp(belief.of("ln_vco2"))
+    return steady_state(
+        shunt=logistic(belief.of("logit_shunt")),
+        vq_log_sd=np.exp(belief.of("ln_vq_log_sd")),
+        alveolar_dead_space=logistic(belief.of("logit_dead_space")),
+        alveolar_ventilation_l_per_min=now.alveolar_l_per_min * np.exp(taken_back),
+        vco2_ml_per_min=vco2,
+        vo2_ml_per_min=vco2 / belief.of("rq"),
+        cardiac_output_l_per_min=np.exp(belief.of("ln_cardiac_output")),
+        hb_g_per_dl=hb_g_per_dl,
+        standard_base_excess_mmol_per_l=belief.of("standard_base_excess"),
+        fio2=breathing.fio2,
+        barometric_mmhg=barometric_mmhg,
+        units=units,
+    )

@@ -1,0 +1,149 @@
+"""What drives gas exchange at one moment, read off the chart: volumes, rates, inspired oxygen, devices.
+
+A ventilator breathes at the larger of the set rate and the patient's own. A patient whose total rate stands above the
+set one triggers: their own rate is known and a change of the set rate below it does next to nothing. Where the two
+agree the own rate is somewhere below, and zero under paralysis (common practice, no source).
+"""
+
+from dataclasses import dataclass
+from datetime import datetime, timedelta
+
+from engine.record import Case, Entry, Measured, Settings
+
+LATEST_WITHIN = timedelta(hours=4)  # an exhaled volume or a total rate older than this no longer counts
+TRIGGERS_ABOVE_SET_PER_MIN = 1.0  # total above set by more than counting error: the patient triggers
+SUPPORTED_MODES = ("support", "other")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class OwnRate:
+    """What the chart says of the patient's own breathing rate.
+
+    ``per_min`` is the rate seen while triggering; else ``at_most_per_min`` is the highest it can be (the rate at which
+    set and total agreed, or the set rate where no total is charted); under paralysis both are 0.
+    """
+
+    per_min: float | None
+    at_most_per_min: float
+    charted: bool
+
+    @property
+    def triggering(self) -> bool:
+        """Whether the patient was seen to breathe above the set rate."""
+        return bool(self.per_min)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Breathing:
+    """One moment's breathing as charted. ``tidal_volume_ml`` is the one that rules in this mode."""
+
+    mode: str
+    set_rate_per_min: float
+    own_rate: OwnRate
+    tidal_volume_ml: float
+    tidal_volume_charted: bool
+    fio2: float
+    peep_cmh2o: float | None
+    apparatus_dead_space_ml: float
+
+
+def breathing_at(case: Case, settings: Settings, time: datetime) -> Breathing:
+    """Breathing under ``settings`` at ``time``, from all entries of ``case`` (none of them later).
+
+    ``settings`` may differ from those in force: that is how a change is tried. A tidal volume that the mode does not
+    set follows the inspiratory or support pressure in proportion (constant compliance).
+    """
+    in_force = last_settings(case)
+    volume, charted = _tidal_volume(case, settings, in_force, time)
+    return Breathing(
+        mode=settings.mode or "volume",
+        set_rate_per_min=settings.rate_per_min or 0.0,
+        own_rate=own_rate_of(case, time),
+        tidal_volume_ml=volume,
+        tidal_volume_charted=charted,
+        fio2=settings.fio2 or 0.21,
+        peep_cmh2o=settings.peep_cmh2o,
+        apparatus_dead_space_ml=apparatus_dead_space_ml(settings),
+    )
+
+
+def last_settings(case: Case) -> Settings:
+    """Settings in force after the last entry."""
+    in_force = Settings()
+    for entry in case.entries:
+        in_force = in_force.then(entry.settings)
+    return in_force
+
+
+EXCHANGER_ML = 55.0  # nominal, where the volume is not charted: middle of trials' devices (campbell2000, prat2003)
+
+
+def apparatus_dead_space_ml(settings: Settings) -> float:
+    """Nominal device volume: as charted, else by the humidifier, else none is assumed."""
+    if settings.apparatus_dead_space_ml is not None:
+        return settings.apparatus_dead_space_ml
+    return EXCHANGER_ML if settings.humidifier == "exchanger" else 0.0
+
+
+def latest(case: Case, field: str, time: datetime, within: timedelta = LATEST_WITHIN) -> Entry | None:
+    """The last entry that measured ``field`` not longer ago than ``within``."""
+    for entry in reversed(case.entries):
+        if time - entry.time > within:
+            return None
+        if entry.measured is not None and getattr(entry.measured, field) is not None:
+            return entry
+    return None
+
+
+def measured_value(case: Case, field: str, time: datetime, within: timedelta = LATEST_WITHIN) -> float | None:
+    """The last value of a measured field not longer ago than ``within``."""
+    entry = latest(case, field, time, within)
+    return None if entry is None else getattr(entry.measured, field)
+
+
+def own_rate_of(case: Case, time: datetime) -> OwnRate:
+    """The patient's own rate as far as the chart tells, from the last total rate and the set rate it stood beside."""
+    if paralysed(case):
+        return OwnRate(per_min=0.0, at_most_per_min=0.0, charted=True)
+    found: tuple[Measured, Settings] | None = None
+    for entry, settings in case.entries_with_settings():
+        if entry.measured is not None and entry.measured.total_rate_per_min is not None:
+            found = (entry.measured, settings) if time - entry.time <= LATEST_WITHIN else None
+    if found is None or found[0].total_rate_per_min is None:
+        return OwnRate(per_min=None, at_most_per_min=last_settings(case).rate_per_min or 0.0, charted=False)
+    total, set_rate = found[0].total_rate_per_min, found[1].rate_per_min or 0.0
+    if total > set_rate + TRIGGERS_ABOVE_SET_PER_MIN:
+        return OwnRate(per_min=total, at_most_per_min=total, charted=True)
+    return OwnRate(per_min=None, at_most_per_min=min(total, set_rate), charted=True)
+
+
+def paralysed(case: Case) -> bool:
+    """Whether paralysis was begun and not ended."""
+    state = False
+    for entry in case.entries:
+        state = "paralysis" in entry.events or (state and "paralysis_end" not in entry.events)
+    return state
+
+
+def _tidal_volume(case: Case, settings: Settings, in_force: Settings, time: datetime) -> tuple[float, bool]:
+    """The volume that rules, and whether it was charted rather than scaled with a pressure."""
+    exhaled = measured_value(case, "exhaled_tidal_volume_ml", time)
+    set_ml = settings.tidal_volume_ml
+    if settings.mode == "volume" and set_ml is not None:
+        return set_ml, True
+    if set_ml is not None and set_ml != in_force.tidal_volume_ml:
+        return set_ml, True
+    base = exhaled if exhaled else set_ml
+    if base is None:
+        base = _last_exhaled(case)
+    for field in ("inspiratory_pressure_cmh2o", "support_pressure_cmh2o"):
+        before, after = getattr(in_force, field), getattr(settings, field)
+        if before and after is not None and after != before:
+            return base * after / before, False
+    return base, True
+
+
+def _last_exhaled(case: Case) -> float:
+    """The last exhaled volume at any age; `Case` guarantees one where a gas has no set volume."""
+    volumes = [e.measured.exhaled_tidal_volume_ml for e in case.entries if e.measured is not None]
+    return next(v for v in reversed(volumes) if v)
