@@ -32,15 +32,17 @@ FILE_BORDERS = _words("reading lookback __main__")
 MAY_WRITE = _words("lookback __main__")
 
 # Last word of a name that carries a unit; "per" chains them (l_per_min).
-UNITS = _words("mmhg kpa cmh2o ml dl l min s h kg g mol mmol cm m c k j")
+UNITS = _words("mmhg kpa cmh2o ml dl l min s h kg g mol mmol cm m c k j minutes hours seconds")
+UNITS_ALONE = _words("minutes hours seconds")
 # Whole names of numbers without a unit.
 FRACTIONS = (
-    *_words("fio2 so2 sao2 svo2 shunt shunt_fraction"),
+    *_words("fio2 so2 sao2 svo2 shunt"),
     *_words("dead_space alveolar_dead_space bohr_dead_space enghoff_dead_space"),
 )
-RATIOS = _words("respiratory_quotient ie_ratio ventilatory_ratio")
+RATIOS = _words("respiratory_quotient ie_ratio ventilatory_ratio normal_score")
 LOGARITHMS = _words("ph co2_pk vq_log_sd")
-DIMENSIONLESS = (*FRACTIONS, *RATIOS, *LOGARITHMS)
+WORDS = _words("sex obstructive")  # arrays of words, of yes and no
+NEEDS_NO_UNIT = (*FRACTIONS, *RATIOS, *LOGARITHMS, *WORDS, *UNITS_ALONE)
 NUMBERS = re.compile(r"\b(float|Array|ArrayLike|NDArray)\b")
 
 
@@ -199,8 +201,9 @@ def _is_number(annotation: ast.expr | None) -> bool:
 
 def carries_unit(name: str) -> bool:
     """Unit last, or last before a condition: x_mmhg, x_from_y_mmhg, x_mmhg_at_37; its spread: x_mmhg_sd."""
-    quantity = re.split(r"_(?:from|at|after|of|in)_", name)[0]
-    return quantity in DIMENSIONLESS or _ends_in_unit(quantity) or _ends_in_unit(name)
+    quantity = re.split(r"_(?:from|at|after|of|in|to)_", name)[0]
+    says_fraction = "fraction" in quantity.split("_")
+    return says_fraction or quantity in NEEDS_NO_UNIT or _ends_in_unit(quantity) or _ends_in_unit(name)
 
 
 def _ends_in_unit(name: str) -> bool:
