@@ -7,6 +7,7 @@ never acted on.
 import json
 from collections.abc import Callable, Iterable
 from difflib import get_close_matches
+from re import fullmatch
 
 from engine.record import CHOICES, CONDITIONS, EVENTS, POSSIBLE
 from engine.units import (
@@ -30,6 +31,7 @@ _HABITS: dict[str, _Habits] = {
     "_ml_per_min": (("L/min", ml_from_l),),
     "_l_per_min": (("mL/min", l_from_ml),),
     "_ml": (("L", ml_from_l),),
+    "_cm": (("m", lambda m: 100.0 * m),),
     "temperature_c": (("°F", c_from_fahrenheit),),
 }
 _HABIT_OF_FRACTIONS: _Habits = (("per cent", fraction_from_percent),)
@@ -74,7 +76,7 @@ def likely_slip(field: str, value: object) -> str:
         words = CHOICES.get(field) or {"conditions": CONDITIONS, "events": EVENTS}.get(field, ())
         return nearest(value, words) if isinstance(value, str) else ""
     if isinstance(value, str):
-        return "a number stands without quotes"
+        return "a number stands without quotes" if fullmatch(r"-?\d+([.,]\d+)?", value) else ""
     if isinstance(value, bool) or not isinstance(value, int | float):
         return ""
     return _lost_point(field, value) if field.startswith("ph") else _other_unit(field, value)

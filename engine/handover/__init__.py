@@ -1,0 +1,1 @@
+"""What is handed to people: sentences and numbers."""

@@ -1,0 +1,143 @@
+"""A forecast, and the few words all texts share, for a terminal: measured is never mixed with forecast.
+
+Rounded as a clinician reads: pH to 2 decimals, tensions to whole mmHg, saturation and FiO2 in per cent.
+"""
+
+import textwrap
+from collections.abc import Mapping, Sequence
+from datetime import datetime, timedelta
+
+from engine.forecast import QUANTITIES, Draws, Forecast
+from engine.limits import Limit
+from engine.record import Case
+
+CAUTION = (
+    "Estimates, not measurements. Local protocol and licensed practice come first. "
+    "Not for emergencies. Not a certified medical device."
+)
+OLD_GAS_HOURS = 8.0  # common practice, no source
+NEARLY_TOUCHED = 0.9  # a limit kept with less probability than this is shown with those that are not
+_WIDTH = 100
+_LOOKS = {"ph": "pH", "paco2_mmhg": "PaCO2 mmHg", "pao2_mmhg": "PaO2 mmHg", "sao2": "SaO2 %"}
+_TARGETS = {"ph": "pH", "paco2": "PaCO2", "pao2": "PaO2", "sao2": "SaO2", "all": "all together"}
+_HARMS = {
+    "pao2_below_55": "PaO2 below 55 mmHg",
+    "ph_below_7_15": "pH below 7.15",
+    "ph_above_7_55": "pH above 7.55",
+}
+_NAMES = {"fio2": "FiO2", "peep_cmh2o": "PEEP", "ie_ratio": "I:E ratio"}
+_UNITS = {"_l_per_min": " L/min", "_per_min": " /min", "_ml": " mL", "_cmh2o": " cmH2O", "_s": " s"}
+
+
+def forecast_text(found: Forecast, case: Case, now: datetime, title: str) -> str:
+    """A forecast for people: table, settings, chances, limits touched, recheck times, cautions."""
+    when = "once settled" if found.minutes is None else f"{found.minutes:g} min after the change"
+    what = "the change below" if found.changed else "nothing touched"
+    lines = [f"{title}: forecast of the next gas, {when}, {what}", _ages(found, case, now), ""]
+    lines += [*_table(found), "", item(f"Settings: {_settings_text(found)}.", ""), ""]
+    lines += [_chances("In the target range once settled", found.in_target, _TARGETS)]
+    lines += [_chances("At the next gas", found.harm, _HARMS), "", *_limits_text(found.limits), ""]
+    lines += [_recheck_text(found, now), "", *(item(caution) for caution in found.cautions), "", CAUTION]
+    return "\n".join(lines)
+
+
+def _ages(found: Forecast, case: Case, now: datetime) -> str:
+    charted = [entry.time for entry in case.entries if entry.settings is not None and entry.time <= now]
+    age = now - found.made_from
+    old = ", which is old" if age > timedelta(hours=OLD_GAS_HOURS) else ""
+    settings = f"; settings charted {_span(now - charted[-1])} ago" if charted else ""
+    drawn = _clock(found.made_from.astimezone(now.tzinfo))
+    return f"At {_clock(now)} {now:%Z} the last gas ({drawn}) is {_span(age)} old{old}{settings}."
+
+
+def _clock(time: datetime) -> str:
+    return f"{time:%Y-%m-%d %H:%M}"
+
+
+def _span(time: timedelta) -> str:
+    minutes = round(time.total_seconds() / 60)
+    return f"{minutes} min" if minutes < 120 else f"{minutes // 60} h {minutes % 60:02d} min"
+
+
+def _table(found: Forecast) -> list[str]:
+    rows = [("", "measured", "forecast", "50 % interval", "90 % interval")]
+    for quantity in QUANTITIES:
+        draws = found.next_gas[quantity]
+        expected = _digits(quantity, draws.median) if draws else "not forecast"
+        ranges = [_range(quantity, draws, share) for share in (0.5, 0.9)]
+        rows.append((_LOOKS[quantity], _digits(quantity, found.now[quantity]), expected, *ranges))
+    return ["".join((f"{row[0]:<12}", *(f"{cell:>15}" for cell in row[1:]))).rstrip() for row in rows]
+
+
+def _digits(quantity: str, value: float | None) -> str:
+    if value is None:
+        return "-"
+    return f"{value:.2f}" if quantity == "ph" else f"{100 * value if quantity == 'sao2' else value:.0f}"
+
+
+def _range(quantity: str, draws: Draws | None, share: float) -> str:
+    return " to ".join(_digits(quantity, end) for end in draws.interval(share)) if draws else ""
+
+
+def _settings_text(found: Forecast) -> str:
+    words = []
+    for name, value in found.settings.given().items():
+        was = f" (was {_setting(name, found.changed[name][0])})" if name in found.changed else ""
+        bare = next((name.removesuffix(end) for end in _UNITS if name.endswith(end)), name)
+        words.append(f"{_NAMES.get(name, bare.replace('_', ' '))} {_setting(name, value)}{was}")
+    return ", ".join(words)
+
+
+def _setting(name: str, value: object) -> str:
+    if not isinstance(value, float | int):
+        return "not known" if value is None else str(value)
+    if name == "fio2":
+        return f"{100 * value:.3g} %"
+    return f"{value:g}" + next((unit for end, unit in _UNITS.items() if name.endswith(end)), "")
+
+
+def _chances(what: str, chances: Mapping[str, float | None], names: Mapping[str, str]) -> str:
+    known = [f"{names[key]} {_percent(chance)}" for key, chance in chances.items() if chance is not None]
+    return item(f"{what}: {', '.join(known) or 'not known'}.", "")
+
+
+def _percent(chance: float) -> str:
+    return "<1 %" if chance < 0.005 else ">99 %" if chance > 0.995 else f"{100 * chance:.0f} %"
+
+
+def _limits_text(limits: Sequence[Limit]) -> list[str]:
+    touched = [limit for limit in limits if _touched(limit)]
+    unknown = [limit.name for limit in limits if limit.ok is None and limit not in touched]
+    kept = len(limits) - len(touched) - len(unknown)
+    lines = [f"Limits: {len(touched)} touched, {kept} kept, {len(unknown)} not known."]
+    lines += [item(_limit_text(limit)) for limit in touched]
+    return lines + ([item(f"Not known: {', '.join(unknown)}.")] if unknown else [])
+
+
+def _touched(limit: Limit) -> bool:
+    return limit.ok is False or (limit.probability is not None and limit.probability < NEARLY_TOUCHED)
+
+
+def _limit_text(limit: Limit) -> str:
+    value = "not known" if limit.value is None else f"{limit.value:.3g} {limit.unit}".rstrip()
+    bound = f"{limit.limit:g} {limit.unit}".rstrip() if isinstance(limit.limit, float | int) else limit.limit
+    inside = "" if limit.probability is None else f", inside with {_percent(limit.probability)}"
+    return f"{limit.name} {value}, limit {bound} ({limit.level}{inside}): {limit.says} ({limit.source})"
+
+
+def _recheck_text(found: Forecast, now: datetime) -> str:
+    looks = {"early look": found.recheck.early_minutes, "settled gas": found.recheck.settled_minutes}
+    times = [
+        f"{name} at {_clock(now + timedelta(minutes=minutes))} ({minutes:.0f} min from then)"
+        for name, minutes in looks.items()
+        if minutes is not None
+    ]
+    when = f"if changed at {_clock(now)}, " if times and found.changed else ""
+    return item(f"Recheck: {when}{', '.join(times)}{'. ' if times else ''}{found.recheck.reason}", "")
+
+
+def item(text: str, mark: str = "- ") -> str:
+    """One paragraph of running text, filled to the width of the page and hung on its mark."""
+    return textwrap.fill(
+        " ".join(text.split()), _WIDTH, initial_indent=mark, subsequent_indent=" " * len(mark)
+    )
