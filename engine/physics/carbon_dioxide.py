@@ -198,6 +198,32 @@ def paco2_from_ventilation_mmhg(
     return CO2_CONSTANT * np.asarray(vco2_ml_per_min, dtype=np.float64) / ventilation
 
 
+def alveolar_ventilation_of_breaths_l_per_min(
+    rate_per_min: ArrayLike, tidal_volume_ml: ArrayLike, dead_space_ml: ArrayLike
+) -> Array:
+    """Ventilation that reaches perfused alveoli: rate x (tidal volume - dead space), by definition.
+
+    Parameters
+    ----------
+    rate_per_min, tidal_volume_ml, dead_space_ml : array_like
+        Total rate, and volumes per breath, BTPS. They broadcast; NaN in gives NaN out.
+
+    Returns
+    -------
+    alveolar_ventilation : ndarray, broadcast shape
+        L BTPS per minute. Negative where the dead space exceeds the breath; nothing is clamped. Not to be
+        trusted below 1.5 times the airway's dead space, where gas streams past it (Y. Henderson et al., Am. J.
+        Physiol. 38, 1, 1915; from memory).
+
+    Examples
+    --------
+    >>> float(alveolar_ventilation_of_breaths_l_per_min(12.0, 500.0, 150.0))
+    4.2
+    """
+    breath_ml = np.asarray(tidal_volume_ml, dtype=np.float64) - np.asarray(dead_space_ml, dtype=np.float64)
+    return np.asarray(rate_per_min, dtype=np.float64) * breath_ml / _ML_PER_L
+
+
 def bohr_dead_space(palvco2_mmhg: ArrayLike, pexpco2_mmhg: ArrayLike) -> Array:
     """Share of the tidal volume that never meets perfused alveoli.
 

@@ -1,8 +1,8 @@
 """Carbon dioxide and oxygen on their way to a new steady state.
 
 Carbon dioxide sits in three stores: lung gas with the blood that passes it (1), well-perfused tissue with
-venous blood (2), and muscle with other slow tissue (3). Blood flow couples 2 and 3 to 1; ventilation empties
-1::
+venous blood (2), and muscle with other slow tissue (3). Blood flow couples 2 and 3 to 1, which ventilation
+empties::
 
     S1 dP1/dt = b q2 (P2 - P1) + b q3 (P3 - P1) - VA P1 / K       P1 is PaCO2, K the gas law's 0.863
     S2 dP2/dt = M2 + b q2 (P1 - P2)
@@ -10,8 +10,7 @@ venous blood (2), and muscle with other slow tissue (3). Blood flow couples 2 an
 
 While ventilation is constant this is linear, and between two steady states all three tensions move by the
 same amount. So the share of the change that is done depends on the FINAL ventilation alone: not on the step,
-its direction or the CO2 output. PaCO2 falls faster than it rises because the final ventilation is then
-larger.
+its direction or the CO2 output. PaCO2 falls faster than it rises since the final ventilation is then larger.
 
 References
 ----------
@@ -36,8 +35,7 @@ Array = NDArray[np.float64]
 
 
 class Co2Stores(NamedTuple):
-    """Sizes (mL STPD per mmHg) and blood flows (L/min) of the stores at 70 kg; numbers, or arrays of
-    draws."""
+    """Sizes (mL STPD per mmHg) and blood flows (L/min) of the stores at 70 kg; numbers, or draws."""
 
     lung_ml_per_mmhg: ArrayLike = 10.0
     quick_ml_per_mmhg: ArrayLike = 30.0
@@ -55,8 +53,7 @@ STANDARD_KG = 70.0
 
 CO2_PACE_LN_SD = 0.2
 """Spread of ln(time) between patients: sets that fit the published courses are half done at VA 4.3 L/min
-after 6.7 to 11.3 min (`ADULT` 9.2) and 90 % done after 37 to 75 min (`ADULT` 55), here read as a 90 %
-range."""
+after 6.7 to 11.3 min (`ADULT` 9.2), 90 % done after 37 to 75 min (`ADULT` 55); taken for a 90 % range."""
 
 PAO2_MINUTES_TO_90 = 4.0
 """Median time to 90 % of a change of PaO2 after a step of FiO2 (cakar2001: means of 4.2 up and 5.5 down)."""
@@ -64,9 +61,7 @@ PAO2_MINUTES_TO_90_OBSTRUCTIVE = 6.3
 """The same in chronic lung disease (equilibration2015)."""
 PAO2_PACE_LN_SD = 0.7
 """Spread of ln(time): the 95th centile of equilibration2015 lies exp(1.645 x 0.7) above its median; the rate
-constants of cakar2001 (1.01, SD 0.71 up; 0.69, SD 0.42 down) give 0.63 and 0.56, its times (4.2, SD 4.1)
-0.82.
-"""
+constants of cakar2001 (1.01, SD 0.71 up; 0.69, SD 0.42 down) give 0.63 and 0.56, its times 0.82."""
 
 _SETTLED = 1e-9  # of the time sought
 _MOST_STEPS = 100
@@ -108,7 +103,7 @@ def fraction_complete(
     Parameters
     ----------
     minutes : array_like
-        Since the change, >= 0. To make a patient slower than the average one, divide by a factor.
+        Since the change, >= 0. For a patient slower than most divide by a factor (`CO2_PACE_LN_SD`).
     final_alveolar_ventilation_l_per_min : array_like
         Effective (Enghoff) alveolar ventilation after the change, L BTPS per minute, >= 0.
     weight_kg : array_like

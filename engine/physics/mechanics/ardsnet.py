@@ -7,10 +7,13 @@ ardsnet2000 : The ARDS Network, "Ventilation with lower tidal volumes as compare
     1301-1308, 2000, and its ventilator protocol card.
 """
 
+from collections.abc import Sequence
+
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 Array = NDArray[np.float64]
+Words = str | Sequence[str] | NDArray[np.str_]
 
 LOWER_PEEP_TABLE_CMH2O: dict[float, tuple[int, ...]] = {
     0.3: (5,),
@@ -22,8 +25,7 @@ LOWER_PEEP_TABLE_CMH2O: dict[float, tuple[int, ...]] = {
     0.9: (14, 16, 18),
     1.0: (18, 24),
 }
-"""ardsnet2000: the PEEP steps that go with each FiO2, lower-PEEP table; at FiO2 1.0 anything from 18 to
-24."""
+"""ardsnet2000: the PEEP steps that go with each FiO2, lower-PEEP table; 18 to 24 at FiO2 1.0."""
 
 HIGHER_PEEP_TABLE_CMH2O: dict[float, tuple[int, ...]] = {
     0.3: (5, 8, 10, 12, 14),
@@ -40,7 +42,7 @@ HIGHER_PEEP_TABLE_CMH2O: dict[float, tuple[int, ...]] = {
 _CM_PER_INCH = 2.54
 
 
-def predicted_body_weight_kg(sex: ArrayLike, height_cm: ArrayLike) -> Array:
+def predicted_body_weight_kg(sex: Words, height_cm: ArrayLike) -> Array:
     """Weight that a lung of this sex and height was built for; tidal volumes are judged by it.
 
     Parameters
