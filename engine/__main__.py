@@ -192,7 +192,7 @@ def change_from_text(words: Sequence[str]) -> dict[str, object]:
 
 
 def _number(text: str) -> float | None:
-    plain = fullmatch(r"[+-]?(\d+[.,]?\d*|[.,]\d+)", text)
+    plain = fullmatch(r"[+-]?([0-9]+[.,]?[0-9]*|[.,][0-9]+)", text)
     return float(text.replace(",", ".")) if plain else None
 
 
