@@ -180,7 +180,7 @@ def _record(record: Any, given: object, place: _Place) -> Any:
     if not isinstance(given, dict):
         raise place.refuse(given, "an object in braces")
     for key in (key for key in given if key not in kinds):
-        slip = nearest(key, kinds) or (f"it belongs in {_homes()[key]}" if key in _homes() else "")
+        slip = f"it belongs in {_homes()[key]}" if key in _homes() else nearest(key, kinds)
         raise place.at(key).refuse(given[key], "a field of the case format", slip)
     for field in fields(record):
         required = (field.default is MISSING) or field.name in _REQUIRED
