@@ -14,14 +14,14 @@ from dataclasses import asdict
 from datetime import datetime
 from pathlib import Path
 from re import fullmatch
-from typing import NoReturn
+from typing import Any, NoReturn
 
 from engine.checks import Check, checks_for
 from engine.fit import NothingToSay, fit
 from engine.forecast import forecast
 from engine.handover.forecast_text import forecast_text, item
 from engine.lookback import lookback
-from engine.reading.case_file import BadCase, read_case, time_from_text
+from engine.reading.case_file import BadCase, read_case, text_from_time, time_from_text
 from engine.reading.slips import likely_slip, nearest, one_line, quoted, shortened
 from engine.record import CHOICES, Case, Impossible, Settings
 
@@ -64,9 +64,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except Exception as why:  # the last door: a fault of the program, said in one line instead of a traceback
         if sys.flags.dev_mode:
             raise
-        return _ended(
-            BAD_INPUT, f"a fault of the program, nothing was worked out ({type(why).__name__}: {why})"
-        )
+        fault = f"{type(why).__name__}: {why}"
+        return _ended(BAD_INPUT, f"a fault of the program, nothing was worked out ({fault})")
 
 
 def _ended(status: int, says: str) -> int:
@@ -84,9 +83,7 @@ def _run(arguments: list[str]) -> int:
         raise BadInput(f"nothing asked; expected one of {', '.join(_VERBS)}, or --help")
     says = "".join(f"\n{verb:<10} {run.__doc__}" for verb, (run, _) in _VERBS.items())
     top = _Parser(prog="python -m engine", allow_abbrev=False, formatter_class=argparse.RawTextHelpFormatter)
-    top.add_argument(
-        "verb", metavar="VERB", choices=_VERBS, help="one of these; VERB --help says more" + says
-    )
+    top.add_argument("verb", metavar="VERB", choices=_VERBS, help=f"VERB --help says more{says}")
     top.add_argument("rest", nargs=argparse.REMAINDER, help=argparse.SUPPRESS)
     chosen = top.parse_args(arguments)
     run, describe = _VERBS[chosen.verb]
@@ -114,7 +111,7 @@ def _check(args: argparse.Namespace) -> int:
         _print_json(
             [{"case": p.stem, "checks": [asdict(check) for check in checks]} for p, _, checks in rows]
         )
-    else:
+    elif rows:
         print("\n\n".join(_checks_text(path, case, checks) for path, case, checks in rows))
     return refused or (DONE if any(checks for _, _, checks in rows) else NOTHING_TO_SAY)
 
@@ -154,18 +151,19 @@ def _forecast(args: argparse.Namespace) -> int:
     case = read_case(args.case)
     if not case.entries:
         raise NothingToSay(f"{args.case.name}: no entries, so nothing to forecast from")
-    now = args.at or case.entries[-1].time
-    if now < case.entries[-1].time:
-        raise BadInput(f"--at {now.isoformat()}: expected no earlier than the last entry of the case")
+    last = case.entries[-1].time
+    if args.at and args.at < last:
+        raise BadInput(
+            f"--at {text_from_time(args.at)}: expected no earlier than the last entry, {text_from_time(last)}"
+        )
     fitted = fit(case, seed=args.seed, read_as=args.read_as)
-    stops = args.effort == "stops"
-    found = forecast(fitted, change, minutes=args.minutes, effort_stops=stops, seed=args.seed)
+    asked: dict[str, Any] = {"at": args.at, "minutes": args.minutes, "effort_stops": args.effort == "stops"}
+    found = forecast(fitted, change, **asked, seed=args.seed)
     if args.json:
         _print_json(found.as_json() | {"case": args.case.stem})
     else:
-        print(
-            forecast_text(found, case, now, _title(args.case, case) + (", if effort stops" if stops else ""))
-        )
+        title = _title(args.case, case) + (", if breathing effort stops" if args.effort else "")
+        print(forecast_text(found, case, title))
     return DONE
 
 
@@ -235,7 +233,8 @@ def _lookback(args: argparse.Namespace) -> int:
     if not args.folder.is_dir():
         raise BadInput(f"{args.folder}: expected a folder of case files")
     out: Path = args.out
-    if out.is_dir() or not os.access(out if out.exists() else out.absolute().parent, os.W_OK):
+    place = out if out.exists() else out.absolute().parent
+    if out.is_dir() or not out.absolute().parent.is_dir() or not os.access(place, os.W_OK):
         raise BadInput(f"--out {out}: cannot be written; expected a file in a folder that can")
     paths = sorted(args.folder.glob("*.json"))
     if not paths:

@@ -15,7 +15,6 @@ CAUTION = (
     "Estimates, not measurements. Local protocol and licensed practice come first. "
     "Not for emergencies. Not a certified medical device."
 )
-OLD_GAS_HOURS = 8.0  # common practice, no source
 NEARLY_TOUCHED = 0.9  # a limit kept with less probability than this is shown with those that are not
 _WIDTH = 100
 _LOOKS = {"ph": "pH", "paco2_mmhg": "PaCO2 mmHg", "pao2_mmhg": "PaO2 mmHg", "sao2": "SaO2 %"}
@@ -29,25 +28,24 @@ _NAMES = {"fio2": "FiO2", "peep_cmh2o": "PEEP", "ie_ratio": "I:E ratio"}
 _UNITS = {"_l_per_min": " L/min", "_per_min": " /min", "_ml": " mL", "_cmh2o": " cmH2O", "_s": " s"}
 
 
-def forecast_text(found: Forecast, case: Case, now: datetime, title: str) -> str:
+def forecast_text(found: Forecast, case: Case, title: str) -> str:
     """A forecast for people: table, settings, chances, limits touched, recheck times, cautions."""
     when = "once settled" if found.minutes is None else f"{found.minutes:g} min after the change"
     what = "the change below" if found.changed else "nothing touched"
-    lines = [f"{title}: forecast of the next gas, {when}, {what}", _ages(found, case, now), ""]
+    lines = [f"{title}: forecast of the next gas, {when}, {what}", _ages(found, case), ""]
     lines += [*_table(found), "", item(f"Settings: {_settings_text(found)}.", ""), ""]
     lines += [_chances("In the target range once settled", found.in_target, _TARGETS)]
     lines += [_chances("At the next gas", found.harm, _HARMS), "", *_limits_text(found.limits), ""]
-    lines += [_recheck_text(found, now), "", *(item(caution) for caution in found.cautions), "", CAUTION]
+    lines += [_recheck_text(found), "", *(item(caution) for caution in found.cautions), "", CAUTION]
     return "\n".join(lines)
 
 
-def _ages(found: Forecast, case: Case, now: datetime) -> str:
-    charted = [entry.time for entry in case.entries if entry.settings is not None and entry.time <= now]
-    age = now - found.made_from
-    old = ", which is old" if age > timedelta(hours=OLD_GAS_HOURS) else ""
-    settings = f"; settings charted {_span(now - charted[-1])} ago" if charted else ""
-    drawn = _clock(found.made_from.astimezone(now.tzinfo))
-    return f"At {_clock(now)} {now:%Z} the last gas ({drawn}) is {_span(age)} old{old}{settings}."
+def _ages(found: Forecast, case: Case) -> str:
+    """How old the last gas and the last charted settings are; clock times in the zone of now."""
+    now, drawn = found.at, found.made_from.astimezone(found.at.tzinfo)
+    age = f"At {_clock(now)} {now:%Z} the last gas ({_clock(drawn)}) is {_span(now - drawn)} old"
+    charted = [entry.time for entry in case.entries if entry.settings is not None]
+    return f"{age}, settings were last charted {_span(now - charted[-1])} ago." if charted else f"{age}."
 
 
 def _clock(time: datetime) -> str:
@@ -125,15 +123,15 @@ def _limit_text(limit: Limit) -> str:
     return f"{limit.name} {value}, limit {bound} ({limit.level}{inside}): {limit.says} ({limit.source})"
 
 
-def _recheck_text(found: Forecast, now: datetime) -> str:
+def _recheck_text(found: Forecast) -> str:
     looks = {"early look": found.recheck.early_minutes, "settled gas": found.recheck.settled_minutes}
-    times = [
-        f"{name} at {_clock(now + timedelta(minutes=minutes))} ({minutes:.0f} min from then)"
+    times = ", ".join(
+        f"{name} at {_clock(found.at + timedelta(minutes=minutes))} (after {minutes:.0f} min)"
         for name, minutes in looks.items()
         if minutes is not None
-    ]
-    when = f"if changed at {_clock(now)}, " if times and found.changed else ""
-    return item(f"Recheck: {when}{', '.join(times)}{'. ' if times else ''}{found.recheck.reason}", "")
+    )
+    when = f"if changed at {_clock(found.at)}: {times}. " if times else ""
+    return item(f"Recheck {when}{found.recheck.reason}" if times else f"Recheck: {found.recheck.reason}", "")
 
 
 def item(text: str, mark: str = "- ") -> str:

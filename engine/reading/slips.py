@@ -76,7 +76,7 @@ def likely_slip(field: str, value: object) -> str:
         words = CHOICES.get(field) or {"conditions": CONDITIONS, "events": EVENTS}.get(field, ())
         return nearest(value, words) if isinstance(value, str) else ""
     if isinstance(value, str):
-        return "a number stands without quotes" if fullmatch(r"-?\d+([.,]\d+)?", value) else ""
+        return "a number stands without quotes" if fullmatch(r"-?[0-9]+([.,][0-9]+)?", value) else ""
     if isinstance(value, bool) or not isinstance(value, int | float):
         return ""
     return _lost_point(field, value) if field.startswith("ph") else _other_unit(field, value)
