@@ -20,6 +20,7 @@ from engine.lung.prior import PARAMETERS, Belief, Prior, prior_of
 from engine.lung.settling import gas_on_the_way, settled_gas
 from engine.physics.acid_base import standard_base_excess_mmol_per_l
 from engine.physics.air import STANDARD_BAROMETRIC_MMHG, barometric_mmhg_from_altitude
+from engine.physics.exchange import Exchange
 from engine.record import Case, Settings, Site
 
 Array = NDArray[np.float64]
@@ -139,13 +140,17 @@ def _after_gas(
         values = centre[rows] + width[rows] * e
         return Belief(values, before.active[rows], before.own[rows])
 
+    def give(belief: Belief, breathing: Breathing) -> Exchange:
+        return arterial_gas(
+            belief, breathing, reference, hb_g_per_dl=hb, barometric_mmhg=pressure, units=FIT_UNITS
+        )
+
     def log_likelihood(e: Array, rows: Rows) -> Array:
         belief = drawn(e, rows)
-        shared = {"hb_g_per_dl": hb, "barometric_mmhg": pressure}
-        exchange = arterial_gas(belief, situation.breathing, reference, units=FIT_UNITS, **shared)
+        exchange = give(belief, situation.breathing)
         if situation.was is None:
             return observed.log_likelihood(belief, settled_gas(exchange), exchange)
-        was = arterial_gas(belief, situation.was, reference, units=FIT_UNITS, **shared)
+        was = give(belief, situation.was)
         unsettled = gas_on_the_way(
             belief,
             was,
@@ -210,7 +215,7 @@ class _Situation:
 
 def _situation(case: Case, number: int, time: datetime) -> _Situation:
     """A change that first appears with the gas has no date of its own and is taken as settled."""
-    breathing = breathing_at(case, settings_at(case, number), time)
+    breathing = breathing_at(case, settings_at(case, number))
     for change in range(number - 1, 0, -1):
         entry = case.entries[change]
         if time - entry.time > SETTLED_AFTER or entry.gas is not None:
@@ -219,7 +224,7 @@ def _situation(case: Case, number: int, time: datetime) -> _Situation:
         if was.rate_per_min is not None and was.fio2 is not None and was.differing(now):
             return _Situation(
                 breathing=breathing,
-                was=breathing_at(case, was, time),
+                was=breathing_at(case, was),
                 minutes=(time - entry.time) / timedelta(minutes=1),
             )
     return _Situation(breathing=breathing, was=None, minutes=np.inf)

@@ -10,7 +10,7 @@ from datetime import datetime, timedelta
 
 from engine.record import Case, Entry, Measured, Settings
 
-LATEST_WITHIN = timedelta(hours=4)  # an exhaled volume or a total rate older than this no longer counts
+LATEST_WITHIN = timedelta(hours=4)  # how long a measured value speaks for the present; then the last one is kept
 TRIGGERS_ABOVE_SET_PER_MIN = 1.0  # total above set by more than counting error: the patient triggers
 SUPPORTED_MODES = ("support", "other")
 
@@ -47,18 +47,18 @@ class Breathing:
     apparatus_dead_space_ml: float
 
 
-def breathing_at(case: Case, settings: Settings, time: datetime) -> Breathing:
-    """Breathing under ``settings`` at ``time``, from all entries of ``case`` (none of them later).
+def breathing_at(case: Case, settings: Settings) -> Breathing:
+    """Breathing under ``settings`` at the end of ``case``, from all its entries.
 
     ``settings`` may differ from those in force: that is how a change is tried. A tidal volume that the mode does not
     set follows the inspiratory or support pressure in proportion (constant compliance).
     """
     in_force = last_settings(case)
-    volume, charted = _tidal_volume(case, settings, in_force, time)
+    volume, charted = _tidal_volume(case, settings, in_force)
     return Breathing(
         mode=settings.mode or "volume",
         set_rate_per_min=settings.rate_per_min or 0.0,
-        own_rate=own_rate_of(case, time),
+        own_rate=own_rate_of(case),
         tidal_volume_ml=volume,
         tidal_volume_charted=charted,
         fio2=settings.fio2 or 0.21,
@@ -101,14 +101,14 @@ def measured_value(case: Case, field: str, time: datetime, within: timedelta = L
     return None if entry is None else getattr(entry.measured, field)
 
 
-def own_rate_of(case: Case, time: datetime) -> OwnRate:
+def own_rate_of(case: Case) -> OwnRate:
     """The patient's own rate as far as the chart tells, from the last total rate and the set rate it stood beside."""
     if paralysed(case):
         return OwnRate(per_min=0.0, at_most_per_min=0.0, charted=True)
     found: tuple[Measured, Settings] | None = None
     for entry, settings in case.entries_with_settings():
         if entry.measured is not None and entry.measured.total_rate_per_min is not None:
-            found = (entry.measured, settings) if time - entry.time <= LATEST_WITHIN else None
+            found = (entry.measured, settings)
     if found is None or found[0].total_rate_per_min is None:
         return OwnRate(per_min=None, at_most_per_min=last_settings(case).rate_per_min or 0.0, charted=False)
     total, set_rate = found[0].total_rate_per_min, found[1].rate_per_min or 0.0
@@ -125,17 +125,15 @@ def paralysed(case: Case) -> bool:
     return state
 
 
-def _tidal_volume(case: Case, settings: Settings, in_force: Settings, time: datetime) -> tuple[float, bool]:
+def _tidal_volume(case: Case, settings: Settings, in_force: Settings) -> tuple[float, bool]:
     """The volume that rules, and whether it was charted rather than scaled with a pressure."""
-    exhaled = measured_value(case, "exhaled_tidal_volume_ml", time)
     set_ml = settings.tidal_volume_ml
     if settings.mode == "volume" and set_ml is not None:
         return set_ml, True
     if set_ml is not None and set_ml != in_force.tidal_volume_ml:
         return set_ml, True
-    base = exhaled if exhaled else set_ml
-    if base is None:
-        base = _last_exhaled(case)
+    base = _last_exhaled(case) or set_ml
+    assert base is not None  # `Case` guarantees a volume wherever there is a gas
     for field in ("inspiratory_pressure_cmh2o", "support_pressure_cmh2o"):
         before, after = getattr(in_force, field), getattr(settings, field)
         if before and after is not None and after != before:
@@ -143,7 +141,7 @@ def _tidal_volume(case: Case, settings: Settings, in_force: Settings, time: date
     return base, True
 
 
-def _last_exhaled(case: Case) -> float:
-    """The last exhaled volume at any age; `Case` guarantees one where a gas has no set volume."""
+def _last_exhaled(case: Case) -> float | None:
+    """The last exhaled volume charted, at any age: nothing newer is known."""
     volumes = [e.measured.exhaled_tidal_volume_ml for e in case.entries if e.measured is not None]
-    return next(v for v in reversed(volumes) if v)
+    return next((v for v in reversed(volumes) if v), None)

@@ -42,7 +42,7 @@ from numpy.typing import ArrayLike, NDArray
 from engine.physics.acid_base import ph_at_standard_base_excess
 from engine.physics.air import BODY_WATER_VAPOUR_MMHG
 from engine.physics.carbon_dioxide import CO2_CONSTANT, co2_pk, co2_solubility_mmol_per_l_mmhg
-from engine.physics.oxygen import O2_CAPACITY_ML_PER_G, O2_SOLUBILITY_ML_PER_DL_MMHG
+from engine.physics.oxygen import O2_CAPACITY_ML_PER_G, O2_SOLUBILITY_ML_PER_DL_MMHG, po2_from_so2
 
 Array = NDArray[np.float64]
 
@@ -54,8 +54,11 @@ MOST_EXTRACTED = 0.9  # share of end-capillary O2 the tissues can take; beyond i
 DOUGLAS_PH = (6.8, 7.8)  # outside, the red-cell factor of douglas1988 is held: it is singular at 8.142
 LARGEST_STEP = 1.0  # of ln PO2 and ln PCO2 in one Newton step
 LARGEST_PH_STEP = 0.25
+FEW_STEPS = 5  # of a whole block; the lungs that need more go on by themselves
 STEPS = 60
-SETTLED = 1e-6  # of ln PO2 and ln PCO2: far below any analyser
+VENOUS_STEPS = 8
+SETTLED = 1e-5  # of ln PO2 and ln PCO2: far below any analyser
+LEVEL_SETTLED = 1e-4  # mmol/L of the buffer line
 LUNGS_AT_ONCE = 512  # a block that stays in the processor's cache
 
 
@@ -147,7 +150,10 @@ def steady_state(
         _solve(_Lungs(*(c[start : start + LUNGS_AT_ONCE] for c in columns)), units)
         for start in range(0, columns[0].size, LUNGS_AT_ONCE)
     ]
-    return Exchange(*(np.concatenate([b[i] for b in blocks]).reshape(shape) for i in range(8)))
+    pao2, paco2, ph, sao2, svo2, alveolar, held, settled = (
+        np.concatenate([b[i] for b in blocks]).reshape(shape) for i in range(8)
+    )
+    return Exchange(pao2, paco2, ph, sao2, svo2, alveolar, held > 0, settled > 0)
 
 
 class _Lungs(NamedTuple):
@@ -191,8 +197,8 @@ class _Buffer(NamedTuple):
 
     a: float
     pk: float
-    slope: Array | float
-    deoxy: Array | float
+    slope: Array
+    deoxy: Array
     level: Array
 
 
@@ -269,7 +275,8 @@ def _nodes(vq_log_sd: Array, units: int) -> tuple[Array, Array]:
 
 def _mean(values: Array, weight: Array) -> Array:
     """Weighted mean over the units of each lung."""
-    return np.einsum("lu,lu->l", values, weight)
+    mean: Array = np.einsum("lu,lu->l", values, weight)
+    return mean
 
 
 class _State(NamedTuple):
@@ -300,83 +307,157 @@ class _Closing(NamedTuple):
     venous_co2: Array
     held: NDArray[np.bool_]
 
+    def rows(self, kept: NDArray[np.bool_]) -> "_Closing":
+        """The same for some of the lungs."""
+        o2, co2, venous_o2, venous_co2, held = self
+        return _Closing(o2[kept], co2[kept], venous_o2[kept], venous_co2[kept], held[kept])
+
+
+class _Problem(NamedTuple):
+    """A block of lungs with its units laid out: (lungs, units) arrays, and the a-v differences they must feed."""
+
+    lungs: _Lungs
+    r: Array
+    weight: Array
+    pio2: Array
+    uptake: Array
+    output: Array
+
+    def rows(self, kept: NDArray[np.bool_]) -> "_Problem":
+        """The same problem for some of the lungs."""
+        return _Problem(_Lungs(*(a[kept] for a in self.lungs)), *(a[kept] for a in self[1:]))
+
+
+class _Solution(NamedTuple):
+    """Where Newton's method stands, one row a lung: units, arterial blood, closing contents, buffer level, settled."""
+
+    unit: _State
+    artery: _State
+    closing: _Closing
+    level: Array
+    settled: NDArray[np.bool_]
+
 
 def _solve(lungs: _Lungs, units: int) -> tuple[Array, ...]:
-    """Newton's method on one block of lungs; returns the fields of `Exchange` in order."""
+    """Newton's method on one block of lungs; returns the fields of `Exchange` in order.
+
+    Most lungs settle within a few steps; the rest go on without them.
+    """
+    problem = _laid_out(lungs, units)
+    with np.errstate(all="ignore"):  # a lung that runs away ends as NaN and is said to be unsettled
+        found = _newton(problem, _start(problem), FEW_STEPS)
+        late = ~found.settled
+        if late.any():
+            rest = _newton(problem.rows(late), _rows(found, late), STEPS)
+            found = _merged(found, rest, late)
+        line = _whole_blood(lungs.hb, found.level)
+        so2 = _blood(found.artery, lungs.hb, lungs.temperature, line).so2
+        svo2 = _saturation_of_contents(found, lungs, line)
+        vented = _mean(problem.r * np.exp(found.unit.y), problem.weight) / _mean(problem.r, problem.weight)
+    pao2, paco2, ph = np.exp(found.artery.x), np.exp(found.artery.y), found.artery.z
+    known = (pao2, paco2, ph, so2, svo2, vented * (1.0 - lungs.dead))
+    held = (found.closing.held & found.settled).astype(float)
+    return (*(np.where(found.settled, v, np.nan) for v in known), held, found.settled.astype(float))
+
+
+def _laid_out(lungs: _Lungs, units: int) -> _Problem:
     deviate, weight = _nodes(lungs.vq_log_sd, units)
-    hb, temperature, fio2 = (a[:, None] for a in (lungs.hb, lungs.temperature, lungs.fio2))
-    pio2 = fio2 * (lungs.barometric[:, None] - BODY_WATER_VAPOUR_MMHG)
     perfused = lungs.output * (1.0 - lungs.shunt)
     spread = np.exp(lungs.vq_log_sd[:, None] * deviate)
-    r = spread * (lungs.ventilation * (1.0 - lungs.dead) / perfused / _mean(spread, weight))[:, None]
-    need = lungs.vo2 / (10.0 * perfused), lungs.vco2 / (10.0 * perfused)
-    unit, artery = _first_guess(lungs, r, weight, pio2, need[1])
-    closing = line = None
-    with np.errstate(all="ignore"):  # a lung that runs away ends as NaN and is said to be unsettled
-        for _ in range(STEPS):
-            ph = ph_at_standard_base_excess(np.exp(artery.y), lungs.sbe)
-            a_so2 = _blood(artery, lungs.hb, lungs.temperature, line).so2 if line else np.ones_like(ph)
-            line = _whole_blood(lungs.hb, _whole_blood_level(lungs.hb, artery._replace(z=ph), a_so2))
-            a = _blood(artery, lungs.hb, lungs.temperature, line)
-            b = _blood(unit, hb, temperature, _Buffer(*(_column(v) for v in line)))
-            was_unit, was_artery = unit, artery
-            unit, closing = _unit_step(unit, b, r, weight, pio2, fio2, need, closing)
-            artery = artery.towards(
-                a,
-                (1.0 - lungs.shunt) * closing.capillary_o2 + lungs.shunt * closing.venous_o2,
-                (1.0 - lungs.shunt) * closing.capillary_co2 + lungs.shunt * closing.venous_co2,
-            )
-            moved = [np.abs(new - old) for new, old in zip((*unit[:2],), was_unit[:2], strict=True)]
-            moved_artery = [np.abs(new - old) for new, old in zip(artery[:2], was_artery[:2], strict=True)]
-            largest = np.max([*(m.max(axis=1) for m in moved), *moved_artery], axis=0)
-            if not (largest[np.isfinite(largest)] > SETTLED).any():
-                break
-        svo2 = _saturation_of_contents(closing.venous_o2, closing.venous_co2, artery, lungs, line)
-        so2 = _blood(artery, lungs.hb, lungs.temperature, line).so2
-    settled = largest <= SETTLED
-    alveolar = _mean(r * np.exp(unit.y), weight) / _mean(r, weight) * (1.0 - lungs.dead)
-    found = (np.exp(artery.x), np.exp(artery.y), artery.z, so2, svo2, alveolar)
-    return (*(np.where(settled, value, np.nan) for value in found), closing.held, settled)
-
-
-def _column(value: Array | float) -> Array | float:
-    return value[:, None] if isinstance(value, np.ndarray) and value.ndim else value
-
-
-def _first_guess(
-    lungs: _Lungs, r: Array, weight: Array, pio2: Array, co2_need: Array
-) -> tuple[_State, _State]:
-    """CO2 as a gas of one solubility (farhi1967), O2 by the alveolar equation, pH by a straight line."""
-    share = 4.0 / (4.0 + r)
-    y = np.log(share * (K * co2_need / _mean(r * share, weight))[:, None])
-    x = np.log(np.maximum(pio2 - 1.2 * np.exp(y), 40.0))
-    ya = np.log(_mean(r * np.exp(y), weight) / _mean(r, weight))
-    line = lambda y, sbe: 7.4 - 0.55 * (y - np.log(40.0)) + 0.015 * sbe
-    return (
-        _State(x, y, line(y, lungs.sbe[:, None])),
-        _State(np.full_like(ya, np.log(80.0)), ya, line(ya, lungs.sbe)),
+    overall = lungs.ventilation * (1.0 - lungs.dead) / perfused
+    return _Problem(
+        lungs,
+        spread * (overall / _mean(spread, weight))[:, None],
+        weight,
+        (lungs.fio2 * (lungs.barometric - BODY_WATER_VAPOUR_MMHG))[:, None],
+        lungs.vo2 / (10.0 * perfused),
+        lungs.vco2 / (10.0 * perfused),
     )
 
 
-def _unit_step(
-    unit: _State,
-    b: _Blood,
-    r: Array,
-    weight: Array,
-    pio2: Array,
-    fio2: Array,
-    need: tuple[Array, Array],
-    before: _Closing | None,
-) -> tuple[_State, _Closing]:
+def _start(problem: _Problem) -> _Solution:
+    """CO2 as a gas of one solubility (farhi1967), O2 by what the unit's gas can bring, pH by a straight line."""
+    lungs, r, weight, pio2, uptake, output = problem
+    share = 4.0 / (4.0 + r)
+    y = np.log(share * (K * output / _mean(r * share, weight))[:, None])
+    capacity, free = O2_CAPACITY_ML_PER_G * lungs.hb[:, None], K * (1.0 - lungs.fio2[:, None])
+    venous = np.maximum(0.98 * capacity - uptake[:, None], 0.2 * capacity)
+    starved = po2_from_so2(np.clip((venous + r * (pio2 - 45.0) / np.maximum(free, 1e-9)) / capacity, 0.3, 0.97))
+    x = np.log(np.maximum(pio2 - 1.2 * np.exp(y) - free * (capacity - venous) / r, starved))
+    ya = np.log(_mean(r * np.exp(y), weight) / _mean(r, weight))
+    z, za = (7.4 - 0.55 * (v - np.log(40.0)) + 0.015 * b for v, b in ((y, lungs.sbe[:, None]), (ya, lungs.sbe)))
+    artery = _State(np.full_like(ya, np.log(80.0)), ya, za)
+    nothing, level = np.zeros_like(ya), _whole_blood_level(lungs.hb, artery, np.ones_like(ya))
+    line = _columns(_whole_blood(lungs.hb, level))
+    unit = _State(x, y, np.minimum(z, 7.4 + line.level / line.slope))  # no CO2 left: nothing but fixed buffers
+    b = _blood(unit, lungs.hb[:, None], lungs.temperature[:, None], line)
+    capillary = _mean(b.o2, weight), _mean(b.co2, weight)
+    venous_o2, venous_co2, held = _venous_of_capillary(*capillary, uptake, output)
+    return _Solution(unit, artery, _Closing(*capillary, venous_o2, venous_co2, held), level, nothing > 0)
+
+
+def _newton(problem: _Problem, now: _Solution, steps: int) -> _Solution:
+    """Steps of Newton's method until all lungs of the block have settled, or ``steps`` of them."""
+    lungs = problem.lungs
+    hb, temperature = lungs.hb[:, None], lungs.temperature[:, None]
+    for _ in range(steps):
+        line = _whole_blood(lungs.hb, now.level)
+        a = _blood(now.artery, lungs.hb, lungs.temperature, line)
+        b = _blood(now.unit, hb, temperature, _columns(line))
+        unit, closing = _unit_step(problem, now.unit, b, now.closing)
+        artery = now.artery.towards(
+            a,
+            (1.0 - lungs.shunt) * closing.capillary_o2 + lungs.shunt * closing.venous_o2,
+            (1.0 - lungs.shunt) * closing.capillary_co2 + lungs.shunt * closing.venous_co2,
+        )
+        ph = ph_at_standard_base_excess(np.exp(artery.y), lungs.sbe)
+        level = _whole_blood_level(lungs.hb, artery._replace(z=ph), a.so2)
+        moved = np.maximum(_moved(unit, now.unit).max(axis=1), _moved(artery, now.artery))
+        settled = np.asarray((moved <= SETTLED) & (np.abs(level - now.level) <= LEVEL_SETTLED))
+        now = _Solution(unit, artery, closing, level, settled)
+        if settled.all():
+            break
+    return now
+
+
+def _moved(new: _State, old: _State) -> Array:
+    return np.maximum(np.abs(new.x - old.x), np.abs(new.y - old.y))
+
+
+def _rows(found: _Solution, kept: NDArray[np.bool_]) -> _Solution:
+    return _Solution(
+        _State(*(a[kept] for a in found.unit)),
+        _State(*(a[kept] for a in found.artery)),
+        found.closing.rows(kept),
+        found.level[kept],
+        found.settled[kept],
+    )
+
+
+def _merged(found: _Solution, rest: _Solution, late: NDArray[np.bool_]) -> _Solution:
+    """The solution with the late lungs' rows put in."""
+    for whole, part in zip(
+        (*found.unit, *found.artery, *found.closing, found.level, found.settled),
+        (*rest.unit, *rest.artery, *rest.closing, rest.level, rest.settled),
+        strict=True,
+    ):
+        whole[late] = part
+    return found
+
+
+def _columns(line: _Buffer) -> _Buffer:
+    """A buffer line a lung, as columns against units."""
+    return line._replace(slope=line.slope[:, None], deoxy=line.deoxy[:, None], level=line.level[:, None])
+
+
+def _unit_step(problem: _Problem, unit: _State, b: _Blood, before: _Closing) -> tuple[_State, _Closing]:
     """One Newton step of all units and of both mixed venous contents.
 
     A unit's step is a constant plus its answers to a step of the two venous contents; put into the closing equations
     that leaves a 2 x 2 system a lung.
     """
-    if before is None:
-        venous_o2, venous_co2 = _venous_of_capillary(_mean(b.o2, weight), _mean(b.co2, weight), need)[:2]
-    else:
-        venous_o2, venous_co2 = before.venous_o2, before.venous_co2
+    lungs, r, weight, pio2, uptake, output = problem
+    fio2, venous_o2, venous_co2 = lungs.fio2[:, None], before.venous_o2, before.venous_co2
     po2, pco2, free = np.exp(unit.x), np.exp(unit.y), K * (1.0 - fio2)
     f1 = r * (pio2 - po2 - fio2 * pco2) - free * (b.o2 - venous_o2[:, None])
     f2 = r * pco2 - K * (venous_co2[:, None] - b.co2)
@@ -393,7 +474,7 @@ def _unit_step(
 
     (o, c), (oo, co), (oc, cc) = mean(alone), mean(per_o2), mean(per_co2)
     capillary_o2, capillary_co2 = _mean(b.o2, weight) + o, _mean(b.co2, weight) + c
-    want_o2, want_co2, held = _venous_of_capillary(capillary_o2, capillary_co2, need)
+    want_o2, want_co2, held = _venous_of_capillary(capillary_o2, capillary_co2, uptake, output)
     left = np.where(held, 1.0 - MOST_EXTRACTED, 1.0)
     g1, g2 = want_o2 - venous_o2, want_co2 - venous_co2
     m11, m12, m21, m22 = 1.0 - left * oo, -left * oc, -co, 1.0 - cc
@@ -411,18 +492,19 @@ def _unit_step(
 
 
 def _venous_of_capillary(
-    o2: Array, co2: Array, need: tuple[Array, Array]
+    o2: Array, co2: Array, uptake: Array, output: Array
 ) -> tuple[Array, Array, NDArray[np.bool_]]:
     """Mixed venous contents that belong to mean end-capillary contents, and where O2 uptake had to be cut."""
     least = (1.0 - MOST_EXTRACTED) * o2
-    held = np.asarray(o2 - need[0] < least)
-    return np.where(held, least, o2 - need[0]), co2 + need[1], held
+    held = np.asarray(o2 - uptake < least)
+    return np.where(held, least, o2 - uptake), co2 + output, held
 
 
-def _saturation_of_contents(o2: Array, co2: Array, artery: _State, lungs: _Lungs, line: _Buffer) -> Array:
+def _saturation_of_contents(found: _Solution, lungs: _Lungs, line: _Buffer) -> Array:
     """Saturation of mixed venous blood from its contents."""
-    state = _State(np.full_like(o2, np.log(40.0)), artery.y + 0.1, artery.z - 0.03)
-    for _ in range(8):
+    artery, closing = found.artery, found.closing
+    state = _State(np.full_like(artery.x, np.log(40.0)), artery.y + 0.1, artery.z - 0.03)
+    for _ in range(VENOUS_STEPS):
         b = _blood(state, lungs.hb, lungs.temperature, line)
-        state = state.towards(b, o2, co2)
+        state = state.towards(b, closing.venous_o2, closing.venous_co2)
     return _blood(state, lungs.hb, lungs.temperature, line).so2

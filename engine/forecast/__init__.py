@@ -1,0 +1,7 @@
+"""Fit + change -> Forecast: the next gas, the settled state, when to look, what it touches, what is not known."""
+
+from engine.forecast.predict import Prediction, predict
+from engine.forecast.result import LEVELS, QUANTITIES, Draws, Forecast, Recheck
+from engine.forecast.tried import forecast
+
+__all__ = ["LEVELS", "QUANTITIES", "Draws", "Forecast", "Prediction", "Recheck", "forecast", "predict"]

@@ -1,0 +1,139 @@
+"""Cases -> forecasts beside what was measured: how far these forecasts could be trusted.
+
+For every usable gas with an earlier one in its case: the forecast of that gas at its own time, as it stood when the
+last change between the two was made, from all entries strictly before that moment, and that change. Without a change:
+from all entries up to the earlier gas. A change in the gas's own entry counts as made just before it and settled, and no
+measured value of that entry is used. Nothing is refused here: where a screen would not forecast, the interval is wide.
+"""
+
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import ProcessPoolExecutor, as_completed
+from dataclasses import dataclass, replace
+from datetime import timedelta
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from engine.fit import Fit, NothingToSay, fits_along
+from engine.fit.sequence import settings_at
+from engine.forecast import LEVELS, predict
+from engine.reading.case_file import BadCase, read_case
+from engine.record import Case, Entry
+
+Array = NDArray[np.float64]
+
+SCORED = ("paco2_mmhg", "pao2_mmhg", "ph")
+LOOKBACK_DRAWS = 1000
+
+
+@dataclass(frozen=True, slots=True)
+class Lookback:
+    """Rows in the order case, time, made_at, quantity, measured, q05 .. q95; and what was left out, with the reason."""
+
+    rows: tuple[dict[str, Any], ...]
+    left_out: tuple[tuple[str, str], ...]
+
+
+def lookback(
+    paths: Sequence[Path],
+    *,
+    read_as: str,
+    seed: int,
+    workers: int,
+    on_done: Callable[[int, int], None] | None = None,
+) -> Lookback:
+    """Replay every case; one that cannot be used never stops the rest.
+
+    Parameters
+    ----------
+    paths : sequence of Path
+        Case files.
+    read_as : str
+        ``seen`` or ``done``: governs the whole replay.
+    seed : int
+    workers : int
+        Processes; 1 works in this one.
+    on_done : callable, optional
+        Told how many cases of how many are done.
+    """
+    found: dict[Path, tuple[list[dict[str, Any]], str | None]] = {}
+    if workers <= 1:
+        for path in paths:
+            found[path] = _replayed(path, read_as, seed)
+            if on_done:
+                on_done(len(found), len(paths))
+    else:
+        with ProcessPoolExecutor(workers) as pool:
+            waiting = {pool.submit(_replayed, path, read_as, seed): path for path in paths}
+            for done in as_completed(waiting):
+                found[waiting[done]] = done.result()
+                if on_done:
+                    on_done(len(found), len(paths))
+    rows = tuple(row for path in paths for row in found[path][0])
+    left_out = tuple((path.stem, reason) for path in paths if (reason := found[path][1]) is not None)
+    return Lookback(rows, left_out)
+
+
+def _replayed(path: Path, read_as: str, seed: int) -> tuple[list[dict[str, Any]], str | None]:
+    try:
+        case = read_case(path)
+        rows = list(rows_of(case, path.stem, read_as=read_as, seed=seed))
+    except (BadCase, NothingToSay, OSError, FloatingPointError) as reason:
+        return [], str(reason)
+    return rows, None if rows else "fewer than two usable gases"
+
+
+def rows_of(case: Case, name: str, *, read_as: str, seed: int) -> Iterator[dict[str, Any]]:
+    """The rows of one case."""
+    numbers = case.usable_gases()
+    fits = fits_along(case, seed=seed, draws=LOOKBACK_DRAWS, read_as=read_as)
+    for fit, number in zip(fits, numbers[1:], strict=False):
+        yield from _rows_of_gas(case, name, fit, number, seed)
+
+
+def _rows_of_gas(case: Case, name: str, fit: Fit, number: int, seed: int) -> Iterator[dict[str, Any]]:
+    entry, gas = case.entries[number], case.entries[number].gas
+    assert gas is not None  # a usable gas
+    change = last_change(case, fit.gas_number, number)
+    known = case.before(fit.gas_number + 1 if change is None else change)
+    tried, minutes = _tried(case, change, number)
+    p = predict(
+        replace(fit, case=known),
+        tried,
+        hours=max((entry.gas_time - fit.gas_time) / timedelta(hours=1), 0.0),
+        minutes=minutes,
+        effort_stops=False,
+        seed=seed,
+    )
+    for quantity in SCORED:
+        draws = getattr(p.sample, quantity)
+        quantiles = np.quantile(draws[np.isfinite(draws)], LEVELS)
+        yield {
+            "case": name,
+            "time": entry.time.isoformat(),
+            "made_at": (case.entries[fit.gas_number] if change is None else case.entries[change]).time.isoformat(),
+            "quantity": quantity,
+            "measured": getattr(gas, quantity),
+            **{f"q{round(100 * p):02d}": float(v) for p, v in zip(LEVELS, quantiles, strict=True)},
+        }
+
+
+def last_change(case: Case, earlier: int, number: int) -> int | None:
+    """The entry of the last change after the earlier gas's entry, up to the gas's own; ``None`` without one."""
+    for change in range(number, earlier, -1):
+        if settings_at(case, change - 1).differing(settings_at(case, change)):
+            return change
+    return None
+
+
+def _tried(case: Case, change: int | None, number: int) -> tuple[Entry, float | None]:
+    """The change as it was made, without any measured value, and the minutes from it to the gas."""
+    if change is None:
+        return Entry(time=case.entries[number].time), None
+    made = case.entries[change]
+    tried = Entry(time=made.time, settings=made.settings, change_reason=made.change_reason, events=made.events)
+    if change == number:
+        return tried, None
+    return tried, (case.entries[number].gas_time - made.time) / timedelta(minutes=1)
