@@ -15,7 +15,7 @@ CAUTION = (
     "Estimates, not measurements. Local protocol and licensed practice come first. "
     "Not for emergencies. Not a certified medical device."
 )
-NEARLY_TOUCHED = 0.9  # a limit kept with less probability than this is shown with those that are not
+SURELY_KEPT = 0.9  # a limit kept with less probability than this is shown with those that are not
 _WIDTH = 100
 _LOOKS = {"ph": "pH", "paco2_mmhg": "PaCO2 mmHg", "pao2_mmhg": "PaO2 mmHg", "sao2": "SaO2 %"}
 _TARGETS = {"ph": "pH", "paco2": "PaCO2", "pao2": "PaO2", "sao2": "SaO2", "all": "all together"}
@@ -24,7 +24,7 @@ _HARMS = {
     "ph_below_7_15": "pH below 7.15",
     "ph_above_7_55": "pH above 7.55",
 }
-_NAMES = {"fio2": "FiO2", "peep_cmh2o": "PEEP", "ie_ratio": "I:E ratio"}
+_SPELT = {"ph": "pH", "paco2": "PaCO2", "pao2": "PaO2", "fio2": "FiO2", "peep": "PEEP", "ie": "I:E"}
 _UNITS = {"_l_per_min": " L/min", "_per_min": " /min", "_ml": " mL", "_cmh2o": " cmH2O", "_s": " s"}
 
 
@@ -58,7 +58,7 @@ def _span(time: timedelta) -> str:
 
 
 def _table(found: Forecast) -> list[str]:
-    rows = [("", "measured", "forecast", "50 % interval", "90 % interval")]
+    rows: list[tuple[str, ...]] = [("", "measured", "forecast", "50 % interval", "90 % interval")]
     for quantity in QUANTITIES:
         draws = found.next_gas[quantity]
         expected = _digits(quantity, draws.median) if draws else "not forecast"
@@ -82,8 +82,12 @@ def _settings_text(found: Forecast) -> str:
     for name, value in found.settings.given().items():
         was = f" (was {_setting(name, found.changed[name][0])})" if name in found.changed else ""
         bare = next((name.removesuffix(end) for end in _UNITS if name.endswith(end)), name)
-        words.append(f"{_NAMES.get(name, bare.replace('_', ' '))} {_setting(name, value)}{was}")
+        words.append(f"{_spelt(bare)} {_setting(name, value)}{was}")
     return ", ".join(words)
+
+
+def _spelt(name: str) -> str:
+    return " ".join(_SPELT.get(word, word) for word in name.split("_"))
 
 
 def _setting(name: str, value: object) -> str:
@@ -104,23 +108,28 @@ def _percent(chance: float) -> str:
 
 
 def _limits_text(limits: Sequence[Limit]) -> list[str]:
-    touched = [limit for limit in limits if _touched(limit)]
-    unknown = [limit.name for limit in limits if limit.ok is None and limit not in touched]
+    touched = [limit for limit in limits if _doubtful(limit)]
+    unknown = [_spelt(limit.name) for limit in limits if limit.ok is None and limit not in touched]
     kept = len(limits) - len(touched) - len(unknown)
-    lines = [f"Limits: {len(touched)} touched, {kept} kept, {len(unknown)} not known."]
+    lines = [f"Limits: {len(touched)} passed or in doubt, {kept} kept, {len(unknown)} not known."]
     lines += [item(_limit_text(limit)) for limit in touched]
     return lines + ([item(f"Not known: {', '.join(unknown)}.")] if unknown else [])
 
 
-def _touched(limit: Limit) -> bool:
-    return limit.ok is False or (limit.probability is not None and limit.probability < NEARLY_TOUCHED)
+def _doubtful(limit: Limit) -> bool:
+    return limit.ok is False or (limit.probability is not None and limit.probability < SURELY_KEPT)
 
 
 def _limit_text(limit: Limit) -> str:
-    value = "not known" if limit.value is None else f"{limit.value:.3g} {limit.unit}".rstrip()
-    bound = f"{limit.limit:g} {limit.unit}".rstrip() if isinstance(limit.limit, float | int) else limit.limit
     inside = "" if limit.probability is None else f", inside with {_percent(limit.probability)}"
-    return f"{limit.name} {value}, limit {bound} ({limit.level}{inside}): {limit.says} ({limit.source})"
+    numbers = f"{_amount(limit, limit.value)}, limit {_amount(limit, limit.limit)} ({limit.level}{inside})"
+    return f"{_spelt(limit.name)} {numbers}: {limit.says} ({limit.source})"
+
+
+def _amount(limit: Limit, value: float | str | None) -> str:
+    if limit.name == "fio2" or not isinstance(value, float | int):
+        return _setting(limit.name, value)
+    return f"{value:.3g} {limit.unit}".rstrip()
 
 
 def _recheck_text(found: Forecast) -> str:

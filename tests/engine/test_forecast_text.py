@@ -7,7 +7,7 @@ from datetime import UTC, datetime, timedelta, timezone
 import numpy as np
 
 from engine.forecast import Draws, Forecast, Recheck
-from engine.handover.forecast_text import CAUTION, NEARLY_TOUCHED, forecast_text
+from engine.handover.forecast_text import CAUTION, SURELY_KEPT, forecast_text
 from engine.limits import Limit
 from engine.record import Case, Entry, Settings
 
@@ -135,16 +135,18 @@ def test_chances_are_per_cent_and_never_nothing_or_certain():
 def test_limits_touched_show_number_limit_and_source():
     rows = (
         a_limit(),
-        a_limit(name="driving pressure", value=14.0, limit=15.0, level="soft", ok=True),
-        a_limit(name="pH", value=7.21, limit=7.2, unit="", ok=True, probability=NEARLY_TOUCHED - 0.01),
-        a_limit(name="rate", value=30.0, limit=35.0, unit="/min", ok=True, probability=NEARLY_TOUCHED),
+        a_limit(name="fio2", value=0.8, limit=0.6, unit="", level="soft"),
+        a_limit(name="driving_pressure", value=14.0, limit=15.0, level="soft", ok=True),
+        a_limit(name="ph_warning", value=7.21, limit=7.2, unit="", ok=True, probability=SURELY_KEPT - 0.01),
+        a_limit(name="rate", value=30.0, limit=35.0, unit="/min", ok=True, probability=SURELY_KEPT),
         a_limit(name="power", value=None, limit="see source", ok=None),
         a_limit(name="trapping", value=None, limit="none", unit="", ok=None, probability=0.0),
     )
     text = paragraph(forecast_text(a_forecast(limits=rows), CASE, "Bed 7"))
-    assert "Limits: 3 touched, 2 kept, 1 not known." in text
+    assert "Limits: 4 passed or in doubt, 2 kept, 1 not known." in text
     assert "- plateau pressure 32.4 cmH2O, limit 30 cmH2O (hard): It would pass. (a trial, 2000)" in text
-    assert "- pH 7.21, limit 7.2 (hard, inside with 89 %): " in text
+    assert "- FiO2 80 %, limit 60 % (soft): " in text
+    assert "- pH warning 7.21, limit 7.2 (hard, inside with 89 %): " in text
     assert "- trapping not known, limit none (hard, inside with <1 %): " in text
     assert "- Not known: power." in text
     assert "driving pressure" not in text and "rate 30" not in text
