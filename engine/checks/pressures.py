@@ -62,9 +62,9 @@ def peep_against_plateau(moment: Moment) -> Check | None:
         value=round(compliance, 1),
         limit=f"{low:g} to {high:g} mL/cmH2O",
         ok=ok,
-        says=f"{volume[0]:g} mL ({volume[1]}) between PEEP {peep:g} and plateau {plateau:g} cmH2O at "
-        f"{at(moment.time)}: compliance {compliance:.0f} mL/cmH2O"
-        + unless(ok, ", hardly ever seen. Look at PEEP, plateau and volume."),
+        says=f"Compliance {compliance:.0f} mL/cmH2O at {at(moment.time)}, from {volume[0]:g} mL "
+        f"({volume[1]}) between PEEP {peep:g} and plateau {plateau:g} cmH2O"
+        + unless(ok, ": hardly ever seen. Look at PEEP, plateau and volume."),
         source="25 to 90 mL/cmH2O in ventilated adults: textbook (from memory), doubled and halved and more",
     )
 

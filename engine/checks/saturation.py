@@ -1,6 +1,7 @@
 """Checks of saturation: the gas against the curve, the oximeter against the gas, lone readings."""
 
-from datetime import timedelta
+from datetime import datetime, timedelta
+from typing import NamedTuple
 
 from engine.checks.moment import Moment, at_37
 from engine.checks.row import PRACTICE, Check, at, percent, unless
@@ -11,8 +12,14 @@ _PAO2_SCATTER = 0.10  # twice the CV of PaO2 within a stable patient, Thorson 19
 _CURVE_SPREAD = 0.03  # curves of patients differ: DPG, fetal or variant haemoglobin; common practice
 _SPO2_GAP = 0.06  # one and a half times the 4 % asked of oximeters
 _BESIDE_MINUTES = 15.0
-_SLIP, _NEIGHBOURS_AGREE, _JUMP = 0.10, 0.05, 0.15
-_SLIP_HOURS, _JUMP_MINUTES = 2.0, 30.0
+_SLIP, _NEIGHBOURS_AGREE, _FALL = 0.10, 0.05, 0.15
+_SLIP_HOURS = 1.0
+_ROUNDING = 1e-9  # 0.97 - 0.87 is a tenth
+
+
+class _Reading(NamedTuple):
+    spo2: float
+    time: datetime
 
 
 def saturation_on_the_curve(moment: Moment) -> Check | None:
@@ -68,42 +75,58 @@ def oximeter_against_gas(moment: Moment) -> Check | None:
 
 
 def oximeter_slip(moment: Moment) -> Check | None:
-    """An SpO2 that stands alone between two that agree, or a last one far from the one just before.
+    """An SpO2 far from the readings before and after it, which agree; or a last one far below those before.
 
-    Speaks only when it doubts: a chart holds too many readings for a row each.
+    Two readings on either side count, since a slip seldom comes alone. Speaks only when it doubts: a chart
+    holds too many readings for a row each.
     """
-    here = moment.measured("spo2")
-    if here is None:
+    here, before, after = moment.measured("spo2"), _readings(moment, -1), _readings(moment, +1)
+    if here is None or not before:
         return None
-    others = [(e.time, s) for e in moment.case.entries if (s := (e.measured or Measured()).spo2) is not None]
-    place = next(n for n, (time, _) in enumerate(others) if time == moment.time)
-    before = others[place - 1] if place else None
-    after = others[place + 1] if place + 1 < len(others) else None
-    if before is None:
-        return None
-    if after is not None:
-        near = after[0] - before[0] <= timedelta(hours=_SLIP_HOURS)
-        agree = abs(after[1] - before[1]) <= _NEIGHBOURS_AGREE
-        if not (near and agree and min(abs(here - before[1]), abs(here - after[1])) >= _SLIP):
-            return None
-        ok: bool | None = False
-        says = (
-            f"stands alone between {percent(before[1])} at {before[0]:%H:%M} and {percent(after[1])} at "
-            f"{after[0]:%H:%M}: a slip of the chart or the probe, or a short swing. Was the patient seen?"
+    if after:
+        doubt = _stands_alone(here, before, after, highest=True) or _stands_alone(
+            here, before, after, highest=False
         )
     else:
-        if moment.time - before[0] > timedelta(minutes=_JUMP_MINUTES) or abs(here - before[1]) < _JUMP:
-            return None
-        ok = None
-        says = (
-            f"after {percent(before[1])} at {before[0]:%H:%M}: real until shown otherwise. Look at the "
-            "patient, then at the probe."
-        )
+        doubt = _falls(here, before)
+    if not doubt:
+        return None
     return Check(
         name="SpO2 that stands alone",
         value=here,
         limit=f"within {percent(_SLIP)} of its neighbours",
-        ok=ok,
-        says=f"SpO2 {percent(here)} at {at(moment.time)} {says}",
+        ok=False if after else None,
+        says=f"SpO2 {percent(here)} at {at(moment.time)} {doubt}",
         source=PRACTICE,
     )
+
+
+def _stands_alone(here: float, before: list[_Reading], after: list[_Reading], *, highest: bool) -> str:
+    """Held against the highest (or lowest) of either side; empty where it fits or the sides disagree."""
+    first, last = (max(side) if highest else min(side) for side in (before, after))
+    away = min(first.spo2 - here, last.spo2 - here) if highest else min(here - first.spo2, here - last.spo2)
+    if away < _SLIP - _ROUNDING or abs(last.spo2 - first.spo2) > _NEIGHBOURS_AGREE + _ROUNDING:
+        return ""
+    return (
+        f"stands alone between {percent(first.spo2)} at {first.time:%H:%M} and {percent(last.spo2)} at "
+        f"{last.time:%H:%M}: a slip of the chart or the probe, or a short swing. Was the patient seen?"
+    )
+
+
+def _falls(here: float, before: list[_Reading]) -> str:
+    """A last reading far below those just before it; empty where it is not."""
+    best = max(before)
+    if best.spo2 - here < _FALL - _ROUNDING:
+        return ""
+    return (
+        f"after {percent(best.spo2)} at {best.time:%H:%M}: real until shown otherwise. Look at the patient, "
+        "then at the probe."
+    )
+
+
+def _readings(moment: Moment, direction: int) -> list[_Reading]:
+    """The next two SpO2 readings before (-1) or after (+1) this entry, within an hour of it."""
+    entries = moment.case.entries
+    side = reversed(entries[: moment.number]) if direction < 0 else entries[moment.number + 1 :]
+    near = [e for e in side if abs(e.time - moment.time) <= timedelta(hours=_SLIP_HOURS)]
+    return [_Reading(s, e.time) for e in near if (s := (e.measured or Measured()).spo2) is not None][:2]
