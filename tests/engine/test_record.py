@@ -204,6 +204,10 @@ def test_a_gas_is_timed_by_its_sample_where_that_is_known():
     assert Entry(time=START).gas_time == START
 
 
+def test_a_sample_drawn_after_it_was_charted_is_doubtful_not_impossible():
+    assert case_of(gas_at(30, drawn_at=minutes(31))).usable_gases() == (1,)
+
+
 def test_entries_rise_in_time():
     case = case_of(gas_at(0), gas_at(1))
     assert [entry.time for entry in case.entries] == [minutes(-10), minutes(0), minutes(1)]
