@@ -8,6 +8,7 @@ import pytest
 
 from engine import units
 
+HAEM, PER_HAEM = 0.0006, 0.0001  # three and four decimals in use
 SAME = 1e-6  # relative: pint carries mercury and water to seven digits
 BACK = 1e-12
 
@@ -62,8 +63,8 @@ def test_there_and_back(there, back):
 
 def test_haemoglobin_per_haem():
     """1 mmol/L = 1.611 g/dL (common practice, no source)."""
-    assert units.g_per_dl_from_mmol_per_l_hb(1.0) == pytest.approx(1.611, abs=0.0006)
-    assert units.mmol_per_l_hb_from_g_per_dl(1.0) == pytest.approx(0.6206, abs=0.0001)
+    assert units.g_per_dl_from_mmol_per_l_hb(1.0) == pytest.approx(1.611, abs=HAEM)
+    assert units.mmol_per_l_hb_from_g_per_dl(1.0) == pytest.approx(0.6206, abs=PER_HAEM)
 
 
 def test_every_conversion_is_checked():

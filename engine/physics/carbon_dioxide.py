@@ -212,8 +212,8 @@ def alveolar_ventilation_of_breaths_l_per_min(
     -------
     alveolar_ventilation : ndarray, broadcast shape
         L BTPS per minute. Negative where the dead space exceeds the breath; nothing is clamped. Not to be
-        trusted below 1.5 times the airway's dead space, where gas streams past it (Y. Henderson et al., Am. J.
-        Physiol. 38, 1, 1915; from memory).
+        trusted below 1.5 times the airway's dead space, where gas streams past it (Y. Henderson et al., Am.
+        J. Physiol. 38, 1, 1915; from memory).
 
     Examples
     --------

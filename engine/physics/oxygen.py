@@ -65,7 +65,7 @@ def so2_from_po2(po2_mmhg: ArrayLike) -> Array:
     return cubic / (cubic + _CUBE_MMHG3)
 
 
-def so2_slope(po2_mmhg: ArrayLike) -> Array:
+def so2_slope_per_mmhg(po2_mmhg: ArrayLike) -> Array:
     """Slope of the standard curve, dS/dP in fractions per mmHg.
 
     Parameters
@@ -83,7 +83,7 @@ def so2_slope(po2_mmhg: ArrayLike) -> Array:
 
     Examples
     --------
-    >>> so2_slope([26.9, 100.0]).round(4)
+    >>> so2_slope_per_mmhg([26.9, 100.0]).round(4)
     array([0.0247, 0.0007])
     """
     p = np.asarray(po2_mmhg, dtype=np.float64)
@@ -92,7 +92,7 @@ def so2_slope(po2_mmhg: ArrayLike) -> Array:
     return _CUBE_MMHG3 * (3.0 * squares + _LINEAR_MMHG2) / (cubic + _CUBE_MMHG3) ** 2
 
 
-def po2_from_so2(so2: ArrayLike) -> Array:
+def po2_from_so2_mmhg(so2: ArrayLike) -> Array:
     """Oxygen tension of standard blood at a saturation: the exact inverse of `so2_from_po2`.
 
     Parameters
@@ -111,7 +111,7 @@ def po2_from_so2(so2: ArrayLike) -> Array:
 
     Examples
     --------
-    >>> po2_from_so2([0.5, 0.9, 0.97]).round(1)
+    >>> po2_from_so2_mmhg([0.5, 0.9, 0.97]).round(1)
     array([26.9, 58.7, 90.6])
     """
     s = np.asarray(so2, dtype=np.float64)
@@ -172,17 +172,17 @@ def so2_in_blood(
     return so2_from_po2(po2_standard_mmhg(po2_mmhg, ph, pco2_mmhg, temperature_c))
 
 
-def po2_in_blood(
+def po2_in_blood_mmhg(
     so2: ArrayLike, ph: ArrayLike, pco2_mmhg: ArrayLike, temperature_c: ArrayLike = _BODY_C
 ) -> Array:
     """Tension of blood that is not standard, from its saturation: the exact inverse of `so2_in_blood`.
 
     Examples
     --------
-    >>> round(float(po2_in_blood(0.9, 7.20, 60.0)), 1)
+    >>> round(float(po2_in_blood_mmhg(0.9, 7.20, 60.0)), 1)
     72.3
     """
-    return po2_from_so2(so2) / _shift(ph, pco2_mmhg, temperature_c)
+    return po2_from_so2_mmhg(so2) / _shift(ph, pco2_mmhg, temperature_c)
 
 
 def o2_content_ml_per_dl(po2_mmhg: ArrayLike, so2: ArrayLike, hb_g_per_dl: ArrayLike) -> Array:
@@ -245,6 +245,10 @@ def shunt_fraction(
     capillary = np.asarray(capillary_o2_ml_per_dl, dtype=np.float64)
     missing = capillary - np.asarray(arterial_o2_ml_per_dl, dtype=np.float64)
     return missing / (capillary - np.asarray(venous_o2_ml_per_dl, dtype=np.float64))
+
+
+po2_from_so2 = po2_from_so2_mmhg  # shorter names, until all callers say the unit
+po2_in_blood = po2_in_blood_mmhg
 
 
 def _ln_po2_per_c(po2_mmhg: Array) -> Array:

@@ -14,6 +14,8 @@ from engine.physics.air import (
     water_vapour_mmhg,
 )
 
+IDENTITY = 1e-12  # of doubles
+ONE_DIGIT_MMHG = 0.2  # one digit in print; 2.1 exact
 KPA_PER_MMHG = 0.133322387415
 EARTH_RADIUS_M = 6_356_766.0  # of the standard atmosphere
 
@@ -87,7 +89,7 @@ def test_on_pure_oxygen_the_quotient_does_not_matter():
     """Conservation: PB - PH2O - PaCO2 whatever R is."""
     barometric, paco2, quotient = np.meshgrid([500.0, 700.0, 760.0], [20.0, 40.0, 90.0], [0.7, 0.8, 1.0, 1.2])
     left = barometric - 47.0 - paco2
-    np.testing.assert_allclose(palvo2_mmhg(1.0, barometric, paco2, quotient), left, rtol=1e-12)
+    np.testing.assert_allclose(palvo2_mmhg(1.0, barometric, paco2, quotient), left, rtol=IDENTITY)
 
 
 def test_textbook_examples():
@@ -95,13 +97,13 @@ def test_textbook_examples():
     assert float(pio2_mmhg(0.2093, 760.0)) == pytest.approx(149.0, abs=HALF_MMHG)
     assert float(palvo2_mmhg(0.21, 760.0, 36.0)) == pytest.approx(107.0, abs=HALF_MMHG)
     correction = palvo2_mmhg(0.21, 760.0, 40.0) - palvo2_simple_mmhg(0.21, 760.0, 40.0)
-    assert float(correction) == pytest.approx(2.0, abs=0.2)  # one digit in print; 2.1 exact
+    assert float(correction) == pytest.approx(2.0, abs=ONE_DIGIT_MMHG)
 
 
 def test_vapour_does_not_thin_with_the_air():
     """Inspired PO2 falls by the oxygen share of the pressure drop, not of the vapour's."""
     lost = pio2_mmhg(0.21, STANDARD_BAROMETRIC_MMHG) - pio2_mmhg(0.21, 253.0)
-    assert float(lost) == pytest.approx(0.21 * (760.0 - 253.0), rel=1e-12)
+    assert float(lost) == pytest.approx(0.21 * (760.0 - 253.0), rel=IDENTITY)
 
 
 def test_pressure_falls_with_height_and_vapour_rises_with_warmth():

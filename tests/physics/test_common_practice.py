@@ -22,6 +22,9 @@ from engine.physics.carbon_dioxide import (
 )
 from engine.physics.oxygen import o2_content_ml_per_dl, so2_from_po2
 
+CORRECTION_MMHG = 6.0  # what the correction term adds at most here
+NEAR_MMHG = 2.0  # told as "near" and as "the threshold"
+TWO_DIGITS = 0.02  # relative
 AIR = 0.21
 WHOLE_MMHG = 0.5  # told as whole mmHg
 ABOUT_MMHG = 1.0  # told as "about", on the simple equation
@@ -55,8 +58,8 @@ def test_half_the_ventilation():
 
 def test_full_equation_keeps_the_order():
     """With the correction term the drop and the rescue are each within 6 mmHg of what is told."""
-    assert full(AIR, 80.0) == pytest.approx(50.0, abs=6.0)
-    assert full(0.28, 80.0) == pytest.approx(100.0, abs=6.0)
+    assert full(AIR, 80.0) == pytest.approx(50.0, abs=CORRECTION_MMHG)
+    assert full(0.28, 80.0) == pytest.approx(100.0, abs=CORRECTION_MMHG)
 
 
 @pytest.mark.parametrize(
@@ -81,7 +84,7 @@ def test_half_the_output_through_a_shunt(fio2, so2):
 
 def test_hypoxia_on_air_begins_near_paco2_75():
     paco2 = brentq(lambda p: full(AIR, p) - HYPOXIC_MMHG, 40.0, 120.0)
-    assert paco2 == pytest.approx(75.0, abs=2.0)  # "near"
+    assert paco2 == pytest.approx(75.0, abs=NEAR_MMHG)
 
 
 def test_thin_oxygen():
@@ -89,7 +92,7 @@ def test_thin_oxygen():
     normal, barely, threshold = (float(so2_from_po2(full(f, 40.0))) for f in (AIR, 0.195, 0.15))
     assert normal - barely < POINT
     assert full(0.195, 40.0) > 1.4 * HYPOXIC_MMHG
-    assert full(0.15, 40.0) == pytest.approx(HYPOXIC_MMHG, abs=2.0)  # "the threshold"
+    assert full(0.15, 40.0) == pytest.approx(HYPOXIC_MMHG, abs=NEAR_MMHG)
     assert threshold == pytest.approx(0.90, abs=POINT)
 
 
@@ -102,7 +105,7 @@ def test_air_a_mile_high():
 def test_inspired_carbon_dioxide(fraction, mmhg):
     """0.04 % is 0.3 mmHg, 0.5 % 3.8, 3 % 23: Dalton's law on dry gas at sea level, to two digits."""
     dry = float(pio2_mmhg(fraction, STANDARD_BAROMETRIC_MMHG, 0.0))
-    assert dry == pytest.approx(mmhg, rel=0.02)
+    assert dry == pytest.approx(mmhg, rel=TWO_DIGITS)
 
 
 def test_what_counts_of_a_breath():

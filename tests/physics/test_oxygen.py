@@ -11,15 +11,23 @@ from engine.physics.oxygen import (
     o2_content_ml_per_dl,
     po2_at_37_mmhg,
     po2_at_temperature_mmhg,
-    po2_from_so2,
-    po2_in_blood,
+    po2_from_so2_mmhg,
+    po2_in_blood_mmhg,
     po2_standard_mmhg,
     shunt_fraction,
     so2_from_po2,
     so2_in_blood,
-    so2_slope,
+    so2_slope_per_mmhg,
 )
 
+BOHR = 0.04  # spread of published coefficients
+SIX_POINTS = 0.007  # one digit in print, and the misfit of eq. 1
+DIFFERENCE_STEP = 1e-6  # relative, of a central difference in doubles
+SLOPE_FLOOR = 1e-10  # the same where the curve is flat
+PER_CENT = 0.005  # whole per cent in print
+SOLUBILITY = 0.0001  # two digits in print
+PER_SHUNT_MMHG = 0.06  # one decimal
+MILLER_MMHG = 2.0  # haemoglobin not stated
 KPA_PER_MMHG = 0.133322387415
 MMOL_PER_L_FROM_G_PER_DL = 0.6206
 
@@ -33,7 +41,7 @@ ELLIS_MMHG = 0.006  # two decimals
 EXACT = 1e-9  # an exact inverse, in doubles
 EQ3_PER_C = 0.0003  # four decimals, and P at 37 C taken at the point
 CLOSED_SAMPLE_PER_C = 0.002  # agreement of eq. 3 with the mass balance
-ISO_MMHG = 0.2  # half a digit of the grid, and of its inputs
+ISO_MMHG = 0.06  # one decimal
 CONTENT_ML_PER_DL = 0.1  # one decimal in the textbook
 
 
@@ -70,15 +78,15 @@ def test_severinghaus1979_arithmetic(table):
 
 def test_ellis1989_table_and_round_trip(table):
     rows = table("po2_ellis1989")
-    np.testing.assert_allclose(po2_from_so2(rows["so2"]), rows["po2_mmhg"], rtol=0, atol=ELLIS_MMHG)
+    np.testing.assert_allclose(po2_from_so2_mmhg(rows["so2"]), rows["po2_mmhg"], rtol=0, atol=ELLIS_MMHG)
     po2 = np.geomspace(0.5, 600.0, 300)
-    np.testing.assert_allclose(po2_from_so2(so2_from_po2(po2)), po2, rtol=EXACT)
+    np.testing.assert_allclose(po2_from_so2_mmhg(so2_from_po2(po2)), po2, rtol=EXACT)
 
 
 def test_saturation_beyond_its_range_is_not_made_up():
-    assert po2_from_so2(1.0) == np.inf
-    assert float(po2_from_so2(0.0)) == pytest.approx(0.0, abs=EXACT)
-    assert np.isnan(po2_from_so2([-0.01, 1.01, np.nan])).all()
+    assert po2_from_so2_mmhg(1.0) == np.inf
+    assert float(po2_from_so2_mmhg(0.0)) == pytest.approx(0.0, abs=EXACT)
+    assert np.isnan(po2_from_so2_mmhg([-0.01, 1.01, np.nan])).all()
 
 
 def test_second_opinions_are_coded_as_published(table):
@@ -116,22 +124,22 @@ def test_bohr_coefficients():
     """Accepted: -0.48 titrating with CO2, -0.40 with fixed acid, both within 0.04 (from memory)."""
     pco2 = np.array([20.0, 80.0])
     ph = ph_at_whole_blood_base_excess(pco2, 0.0, 15.0, 1.0)
-    p50 = po2_in_blood(0.5, ph, pco2)
-    assert np.diff(np.log10(p50)) / np.diff(ph) == pytest.approx(-0.48, abs=0.04)
-    fixed_acid = np.log10(po2_in_blood(0.5, 7.20, 40.0) / po2_in_blood(0.5, 7.40, 40.0)) / -0.20
-    assert float(fixed_acid) == pytest.approx(-0.40, abs=0.04)
+    p50 = po2_in_blood_mmhg(0.5, ph, pco2)
+    assert np.diff(np.log10(p50)) / np.diff(ph) == pytest.approx(-0.48, abs=BOHR)
+    fixed_acid = np.log10(po2_in_blood_mmhg(0.5, 7.20, 40.0) / po2_in_blood_mmhg(0.5, 7.40, 40.0)) / -0.20
+    assert float(fixed_acid) == pytest.approx(-0.40, abs=BOHR)
 
 
 def test_saturation_falls_by_six_points_from_ph_740_to_730():
     """Textbook, PO2 40; the pH is lowered by CO2 in the living. Its one digit and eq. 1 allow 0.007."""
     pco2 = brentq(lambda p: float(ph_at_standard_base_excess(p, -0.58)) - 7.30, 40.0, 80.0)
     fall = so2_in_blood(40.0, 7.40, 40.0) - so2_in_blood(40.0, 7.30, pco2)
-    assert float(fall) == pytest.approx(0.06, abs=0.007)
+    assert float(fall) == pytest.approx(0.06, abs=SIX_POINTS)
 
 
 def test_blood_and_standard_curve_are_each_others_inverse():
     so2, ph, pco2 = np.meshgrid([0.3, 0.75, 0.97], [7.0, 7.4, 7.7], [15.0, 40.0, 120.0])
-    po2 = po2_in_blood(so2, ph, pco2, 39.0)
+    po2 = po2_in_blood_mmhg(so2, ph, pco2, 39.0)
     np.testing.assert_allclose(so2_in_blood(po2, ph, pco2, 39.0), so2, rtol=EXACT)
     np.testing.assert_allclose(po2_standard_mmhg(po2, 7.40, 40.0), po2, rtol=EXACT)
 
@@ -139,7 +147,9 @@ def test_blood_and_standard_curve_are_each_others_inverse():
 def test_slope_is_the_derivative():
     po2, step = np.linspace(1.0, 300.0, 200), 1e-4
     numeric = (so2_from_po2(po2 + step) - so2_from_po2(po2 - step)) / (2 * step)
-    np.testing.assert_allclose(so2_slope(po2), numeric, rtol=1e-6, atol=1e-10)  # of the finite difference
+    np.testing.assert_allclose(
+        so2_slope_per_mmhg(po2), numeric, rtol=DIFFERENCE_STEP, atol=SLOPE_FLOOR
+    )  # of the finite difference
 
 
 def test_sealed_sample_severinghaus1979_table(table):
@@ -162,7 +172,7 @@ def test_sealed_sample_keeps_its_oxygen_siggaard1984(table):
 
 def test_sealed_sample_bradley1956():
     """6 % per degree in the normal range (J. Appl. Physiol. 9, 201), printed without a decimal."""
-    assert float(po2_at_temperature_mmhg(100.0, 38.0) / 100.0) == pytest.approx(1.06, abs=0.005)
+    assert float(po2_at_temperature_mmhg(100.0, 38.0) / 100.0) == pytest.approx(1.06, abs=PER_CENT)
 
 
 def test_temperature_there_and_back():
@@ -183,7 +193,7 @@ def test_textbook_contents():
 def test_solubility_siggaard1984():
     """0.0105 mmol/L/kPa; 22.39 mL STPD per mmol; printed to three digits."""
     ml_per_dl_mmhg = 0.0105 * 22.39 / 10.0 * KPA_PER_MMHG
-    assert pytest.approx(ml_per_dl_mmhg, abs=0.0001) == O2_SOLUBILITY_ML_PER_DL_MMHG
+    assert pytest.approx(ml_per_dl_mmhg, abs=SOLUBILITY) == O2_SOLUBILITY_ML_PER_DL_MMHG
 
 
 def behind_a_shunt_mmhg(shunt, palvo2, difference_ml_per_dl, hb_g_per_dl):
@@ -218,7 +228,7 @@ def test_difference_per_percent_of_shunt_on_pure_oxygen():
     """Evaluated elsewhere; the rule of thumb says 20 mmHg (textbook, from memory)."""
     shunt = np.array([0.02, 0.05, 0.10, 0.20, 0.25, 0.30])
     per_percent = [(673.0 - behind_a_shunt_mmhg(s, 673.0, 5.0, 14.0)) / (100.0 * s) for s in shunt]
-    np.testing.assert_allclose(per_percent, [16.4, 16.9, 17.9, 19.8, 20.3, 19.0], rtol=0, atol=0.06)
+    np.testing.assert_allclose(per_percent, [16.4, 16.9, 17.9, 19.8, 20.3, 19.0], rtol=0, atol=PER_SHUNT_MMHG)
 
 
 def test_more_flow_through_the_same_shunt():
@@ -227,7 +237,7 @@ def test_more_flow_through_the_same_shunt():
     for hb in (14.0, 15.0):
         for output, pao2 in ((5.0, 78.0), (8.0, 85.0)):
             ours = behind_a_shunt_mmhg(0.10, 101.8, 250.0 / output / 10.0, hb)
-            assert ours == pytest.approx(pao2, abs=2.0)
+            assert ours == pytest.approx(pao2, abs=MILLER_MMHG)
 
 
 def test_a_worked_shunt_study():
