@@ -1,13 +1,14 @@
 """Entry of the dashboard: ``streamlit run dashboard/app.py``.
 
-Started by the server, this file is read twice over: once as a module, for ``app`` (the server with the route that
-serves the plotting script and the headers that keep the page on this machine), then as the script of every screen run.
+Started by the server, this file is read twice over: once as a module, for ``app`` (the server with the route
+that serves the plotting script and the headers that keep the page on this machine), then as the script of
+every screen run.
 """
+
+import streamlit as st
 
 from dashboard import server
 from dashboard.views import bed
-
-import streamlit as st
 
 
 def main() -> None:

@@ -1,10 +1,12 @@
 """Engine calls remembered for one browser session: the only caching there is.
 
-Nothing of one session reaches another (``scope="session"``), and little is kept (``max_entries``). A case is told from
-another by its full text, never by a sample of it.
+Nothing of one session reaches another (``scope="session"``), and little is kept (``max_entries``). A case is
+told from another by its full text, never by a sample of it.
 """
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from datetime import datetime
+from typing import Any
 
 import streamlit as st
 
@@ -15,7 +17,7 @@ from engine.fit import Fit, fit
 from engine.forecast import Forecast
 from engine.record import Case
 
-_BY_TEXT = {Case: repr}
+_BY_TEXT: dict[str | type[Any], Callable[[Any], Any]] = {Case: repr}
 _Change = tuple[tuple[str, object], ...]
 
 
@@ -26,13 +28,13 @@ def fitted(case: Case) -> Fit:
 
 
 @st.cache_resource(scope="session", max_entries=50, show_spinner=False, hash_funcs=_BY_TEXT)
-def _forecast(case: Case, change: _Change, effort_stops: bool) -> Forecast:
-    return forecasting.forecast(fitted(case), dict(change), effort_stops=effort_stops)
+def _forecast(case: Case, change: _Change, at: datetime, effort_stops: bool) -> Forecast:
+    return forecasting.forecast(fitted(case), dict(change), at=at, effort_stops=effort_stops)
 
 
-def forecast(case: Case, change: Mapping[str, object], *, effort_stops: bool) -> Forecast:
-    """`engine.forecast.forecast` of the settled gas after ``change``."""
-    return _forecast(case, tuple(sorted(change.items())), effort_stops)
+def forecast(case: Case, change: Mapping[str, object], *, at: datetime, effort_stops: bool) -> Forecast:
+    """`engine.forecast.forecast` of the settled gas after ``change``, made ``at`` a time to the minute."""
+    return _forecast(case, tuple(sorted(change.items())), at, effort_stops)
 
 
 @st.cache_resource(scope="session", max_entries=8, show_spinner=False, hash_funcs=_BY_TEXT)

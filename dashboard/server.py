@@ -1,4 +1,4 @@
-"""The server around the screens: what it serves beside them, what it lets a browser do, what it may write down."""
+"""The server around the screens: what it serves beside them and what it may write down."""
 
 import gc
 import logging
@@ -19,12 +19,12 @@ from dashboard.wording import SAFETY, colour_variables
 ABOUT = f"**Forebreath** forecasts what a ventilator change will do to the next arterial gas.\n\n{SAFETY}"
 _STYLES = Path(__file__).with_name("paper.css")
 
-# The page may load from, and talk to, this server alone. Inline styles and blob scripts are how the screen library
-# itself works.
+# The page may load from, and talk to, this server alone. Inline styles and blob scripts are how the screen
+# library itself works.
 _POLICY = (
     "default-src 'self'; script-src 'self' 'unsafe-inline' blob:; style-src 'self' 'unsafe-inline'; "
-    "img-src 'self' data: blob:; font-src 'self' data:; connect-src 'self' ws: wss:; worker-src 'self' blob:; "
-    "object-src 'none'; base-uri 'self'; frame-ancestors 'none'; form-action 'self'"
+    "img-src 'self' data: blob:; font-src 'self' data:; connect-src 'self' ws: wss:; "
+    "worker-src 'self' blob:; object-src 'none'; base-uri 'self'; frame-ancestors 'none'; form-action 'self'"
 )
 _HEADERS = {
     "Content-Security-Policy": _POLICY,

@@ -1,13 +1,14 @@
 """What one browser tab holds, and everything a hand can do to it. The only file that touches session state.
 
-A tab holds the patients it has seen, which one is in hand, the change being tried and the steps back from it. Trying
-saves nothing. The functions below are the widgets' callbacks: they change the `Bed` and keep the text in every field
-equal to the value in use, so that no field ever shows one number while another is computed with.
+A tab holds the patients it has seen, which one is in hand, the change being tried and the steps back from it.
+Trying saves nothing. The functions below are the widgets' callbacks: they change the `Bed` and keep the text
+in every field equal to the value in use, so that no field ever shows one number while another is computed
+with.
 """
 
-from collections.abc import MutableMapping
+from collections.abc import Mapping, MutableMapping
 from dataclasses import dataclass, field
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
 from typing import Any
 from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
@@ -19,6 +20,9 @@ from engine.reading.case_file import BadCase, case_from_bytes
 from engine.record import CHOICES, Case, Settings
 
 STEPS_BACK = 50
+LIVE_WITHIN = timedelta(
+    hours=24
+)  # a file whose last entry is farther from the clock is read as of that entry
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -29,20 +33,33 @@ class Held:
     title: str
     demo: bool
 
+    def moment(self, clock: datetime) -> datetime:
+        """What the screen calls now: the clock, or the last entry of a file from another day."""
+        if not self.case.entries:
+            return clock
+        last = self.case.entries[-1].time
+        return max(clock, last) if self.live(clock) else last
+
+    def live(self, clock: datetime) -> bool:
+        """Whether the last entry lies near the clock."""
+        return not self.case.entries or abs(clock - self.case.entries[-1].time) <= LIVE_WITHIN
+
 
 @dataclass(slots=True, kw_only=True)
 class Bed:
     """The state behind the screen Bed."""
 
+    demos: dict[str, str] = field(default_factory=dict)
     patients: dict[str, Held] = field(default_factory=dict)
     chosen: str | None = None
+    read: str | None = None
     tried: dict[str, object] = field(default_factory=dict)
     effort_stops: bool = False
     earlier: list[tuple[dict[str, object], bool]] = field(default_factory=list)
     refused: dict[str, str] = field(default_factory=dict)
     upload_says: tuple[bool, str] | None = None
     uploads: int = 0
-    units: Units = Units()
+    units: Units = field(default_factory=Units)
 
     @property
     def in_hand(self) -> Held | None:
@@ -53,12 +70,27 @@ class Bed:
 def bed() -> Bed:
     """The tab's state, made at its first visit with the first demo patient in hand."""
     if "bed" not in st.session_state:
-        st.session_state["bed"] = Bed()
-        names = demos.demo_names()
-        if names:
-            _take_demo(names[0])
+        st.session_state["bed"] = Bed(demos=demos.demo_titles())
+        if bed().demos:
+            _take_demo(next(iter(bed().demos)))
     held: Bed = st.session_state["bed"]
     return held
+
+
+def is_unread() -> bool:
+    """Whether the patient in hand has just come to hand, and the lung behind the gases is still to be read."""
+    return bed().read != bed().chosen
+
+
+def mark_read() -> None:
+    """The patient in hand has been read: from here on changes are quick."""
+    bed().read = bed().chosen
+
+
+def moment() -> datetime:
+    """The moment the screen speaks of, to the minute, in the zone of the browser."""
+    held, clock = bed().in_hand, now().replace(second=0, microsecond=0)
+    return held.moment(clock) if held is not None else clock
 
 
 def now() -> datetime:
@@ -69,13 +101,13 @@ def now() -> datetime:
         return datetime.now(UTC)
 
 
-# ---------------------------------------------------------------------------------------------------------- patients
+# --------------------------------------------------------------------------------------------------- patients
 
 
 def patient_options() -> dict[str, str]:
     """Key and title of every patient that can be chosen: uploads of this tab first, then the demos."""
     uploads = {key: held.title for key, held in bed().patients.items() if not held.demo}
-    return uploads | {f"demo:{name}": f"Demo · {demos.title_of(name)}" for name in demos.demo_names()}
+    return uploads | {f"demo:{name}": title for name, title in bed().demos.items()}
 
 
 def choose_patient() -> None:
@@ -94,7 +126,7 @@ def _take_demo(name: str) -> None:
     except BadCase as why:
         bed().upload_says = (False, str(why))
         return
-    bed().patients[key] = Held(case=case, title=demos.title_of(name), demo=True)
+    bed().patients[key] = Held(case=case, title=bed().demos[name], demo=True)
     _take(key)
 
 
@@ -111,7 +143,9 @@ def take_upload() -> None:
     finally:
         state.uploads += 1  # a fresh chooser, so that the same file can be chosen again once mended
     key = f"upload:{state.uploads}"
-    state.patients[key] = Held(case=case, title=f"{case.label} · uploaded file", demo=False)
+    state.patients[key] = Held(
+        case=demos.moved(case, timedelta(), now().tzinfo), title=f"{case.label} · uploaded file", demo=False
+    )
     _take(key)
     state.upload_says = (True, f"{case.label}: {len(case.entries)} entries read from the file.")
 
@@ -123,21 +157,20 @@ def upload_key() -> str:
 
 def _take(key: str) -> None:
     state = bed()
-    state.chosen, state.upload_says = key, None
+    state.chosen, state.read, state.upload_says = key, None, None
     state.tried, state.effort_stops, state.earlier, state.refused = {}, False, [], {}
     st.session_state["patient"] = key
     _rewrite_fields()
 
 
-# ------------------------------------------------------------------------------------------------- trying a change
+# -------------------------------------------------------------------------------------------- trying a change
 
 
 def charted() -> Settings:
     """The settings in force after the last entry of the patient in hand."""
-    held, last = bed().in_hand, Settings()
-    for _, last in held.case.entries_with_settings() if held else ():
-        pass
-    return last
+    held = bed().in_hand
+    entries = list(held.case.entries_with_settings()) if held else []
+    return entries[-1][1] if entries else Settings()
 
 
 def in_use(name: str) -> Any:
@@ -163,18 +196,24 @@ def type_number(name: str) -> None:
     except typed.Unclear as why:
         bed().refused[name] = why.says
         return
-    _try(name, getattr(charted(), name) if value is None else value)
+    _try({name: getattr(charted(), name) if value is None else value})
 
 
 def step_number(name: str, direction: int) -> None:
     """Callback of the − and + beside a number field."""
-    _try(name, typed.stepped(in_use(name), direction, FIELDS[name]))
+    _try({name: typed.stepped(in_use(name), direction, FIELDS[name])})
 
 
 def choose_humidifier() -> None:
-    """Callback of the humidifier."""
-    choice = st.session_state[field_key("humidifier")]
-    _try("humidifier", choice if choice in CHOICES["humidifier"] else charted().humidifier)
+    """Callback of the humidifier; the volume of an exchanger goes and comes with it."""
+    before, choice = charted(), st.session_state[field_key("humidifier")]
+    choice = choice if choice in CHOICES["humidifier"] else before.humidifier
+    volume = before.apparatus_dead_space_ml
+    if before.humidifier == "exchanger" and volume is not None:
+        volume = 0.0 if choice == "heated" else volume
+        _try({"humidifier": choice, "apparatus_dead_space_ml": volume})
+    else:
+        _try({"humidifier": choice})
 
 
 def toggle_effort() -> None:
@@ -200,15 +239,16 @@ def as_charted() -> None:
     _rewrite_fields()
 
 
-def _try(name: str, value: object) -> None:
-    state = bed()
-    state.refused.pop(name, None)
-    if value != in_use(name):
+def _try(change: Mapping[str, object]) -> None:
+    """One step: these values are used from here on; a value as charted is no change."""
+    state, before = bed(), charted()
+    if any(value != in_use(name) for name, value in change.items()):
         _remember()
-        state.tried = {other: kept for other, kept in state.tried.items() if other != name}
-        if value != getattr(charted(), name):
-            state.tried[name] = value
-    _rewrite_field(name)
+    wanted = {**state.tried, **change}
+    state.tried = {name: value for name, value in wanted.items() if value != getattr(before, name)}
+    for name in change:
+        state.refused.pop(name, None)
+        _rewrite_field(name)
 
 
 def _remember() -> None:
@@ -227,10 +267,12 @@ def _rewrite_field(name: str) -> None:
     st.session_state[field_key(name)] = FIELDS[name].on_screen(value) if name in FIELDS else value
 
 
-# ------------------------------------------------------------------------------------------------------------ units
+# ------------------------------------------------------------------------------------------------------ units
 
 
 def choose_units() -> None:
     """Callback of the two unit choices."""
     chosen: MutableMapping[Any, Any] = st.session_state
-    bed().units = Units(chosen["unit_gas"] or bed().units.gas, chosen["unit_haemoglobin"] or bed().units.haemoglobin)
+    bed().units = Units(
+        chosen["unit_gas"] or bed().units.gas, chosen["unit_haemoglobin"] or bed().units.haemoglobin
+    )

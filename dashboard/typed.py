@@ -1,7 +1,7 @@
 """Numbers as a hand types them: comma or point, read one way or not at all.
 
-The stock number field drops a decimal comma and turns 7,4 into 74; here every number is typed as text, read by
-`read`, and what is not clear is asked, never guessed.
+The stock number field drops a decimal comma and turns 7,4 into 74; here every number is typed as text, read
+by `read`, and what is not clear is asked, never guessed.
 """
 
 import re
@@ -9,8 +9,8 @@ from dataclasses import dataclass
 
 from dashboard.wording import Field
 
-_NUMBER = re.compile(r"(\d+)(?:([.,])(\d+))?|([.,])(\d+)")
-_LOOKS_GROUPED = re.compile(r"[1-9]\d{0,2}[.,]\d{3}")
+_NUMBER = re.compile(r"[0-9]+(?:[.,][0-9]+)?|[.,][0-9]+")
+_LOOKS_GROUPED = re.compile(r"[1-9][0-9]{0,2}[.,][0-9]{3}")
 
 
 class Unclear(ValueError):
@@ -25,7 +25,8 @@ class Unclear(ValueError):
 class Typed:
     """A number that was read.
 
-    ``value`` in the engine's unit (FiO2 a fraction), ``None`` for an empty field; ``says`` what was understood.
+    ``value`` in the engine's unit (FiO2 a fraction), ``None`` for an empty field; ``says`` what was
+    understood.
     """
 
     value: float | None
@@ -57,12 +58,14 @@ def read(text: str, field: Field) -> Typed:
     if not bare:
         return Typed(value=None, says="as charted")
     if not _NUMBER.fullmatch(bare):
-        raise Unclear(f"“{_shortened(text)}” is not one number. Type for example {field.on_screen(field.low)}.")
+        raise Unclear(f"“{_shortened(text)}” is not one number. Use digits and at most one comma or point.")
     shown = float(bare.replace(",", "."))
     _ask_about_groups(bare, shown, field)
     _ask_about_fractions(bare, shown, field)
     if not field.low <= field.from_screen(shown) <= field.high:
-        raise Unclear(f"{field.label} {shown:g}{field.unit_after_number} cannot be: expected {field.range_text}.")
+        raise Unclear(
+            f"{field.label} {shown:g}{field.unit_after_number} cannot be: expected {field.range_text}."
+        )
     value = field.from_screen(shown)
     return Typed(value=value, says=f"read as {field.with_unit(value)}")
 
@@ -84,22 +87,25 @@ def _ask_about_groups(bare: str, shown: float, field: Field) -> None:
         return
     whole = float(re.sub("[.,]", "", bare))
     if field.low <= field.from_screen(whole) <= field.high:
-        raise Unclear(f"“{bare}” could be {shown:g} or {whole:g}. Type it without the mark: {whole:g}, or {shown:g}.")
+        raise Unclear(
+            f"“{bare}” could be {shown:g} or {whole:g}. Type it without the mark: {whole:g}, or {shown:g}."
+        )
 
 
 def _ask_about_fractions(bare: str, shown: float, field: Field) -> None:
     """0.5 in a per-cent field may be a fraction; 1 may be 100 %. Ask, since guessing hides the slip."""
-    if field.unit == "%" and 0 < shown <= 1 and field.low <= shown <= field.high:
+    if field.scale == 100 and 0 < shown <= 1:
         raise Unclear(
-            f"{field.label} is in per cent here: {bare} % cannot be. If you mean the fraction {bare}, type {shown * 100:g}."
+            f"{field.label} is in per cent here, and {bare} % cannot be. "
+            f"If you mean the fraction {bare}, type {shown * 100:g}."
         )
 
 
 def stepped(value: float | None, direction: int, field: Field) -> float:
     """The value one step up (``direction`` 1) or down (-1), held inside the possible range.
 
-    ``None`` starts from the low end of the range. Steps are taken on the screen's scale, so that 35 % and 5 % make
-    exactly 40 %.
+    ``None`` starts from the low end of the range. Steps are taken on the screen's scale, so that 35 % and 5 %
+    make exactly 40 %.
     """
     shown = field.to_screen(field.low if value is None else value) + direction * field.step
     return min(max(field.from_screen(round(shown, 6)), field.low), field.high)

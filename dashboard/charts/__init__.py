@@ -1,1 +1,1 @@
-"""Engine results as figures: plain dicts of ``data`` and ``layout``; nothing here knows the screen library."""
+"""Engine results as figures: plain dicts of ``data`` and ``layout``, without the screen library."""

@@ -16,7 +16,8 @@ _WIDER_THAN_HIGH = 2.2  # a clock time is about that much wider than high
 
 
 def free_sides(places: Sequence[tuple[float, float]]) -> list[str]:
-    """For each point, the side on which its label keeps farthest from the other points and the labels already set.
+    """For each point, the side on which its label keeps farthest from the other points and the labels already
+    set.
 
     Parameters
     ----------
@@ -33,7 +34,9 @@ def free_sides(places: Sequence[tuple[float, float]]) -> list[str]:
     for number in reversed(range(len(places))):
         others = [place for other, place in enumerate(places) if other != number] + taken
 
-        def room(side: str, here: tuple[float, float] = places[number], others: list[tuple[float, float]] = others) -> float:
+        def room(
+            side: str, here: tuple[float, float] = places[number], others: list[tuple[float, float]] = others
+        ) -> float:
             x, y = here[0] + _SIDES[side][0], here[1] + _SIDES[side][1]
             outside = not (0.06 < x < 0.94 and 0.04 < y < 0.97)
             gaps = [((x - u) / _WIDER_THAN_HIGH) ** 2 + (y - v) ** 2 for u, v in others]

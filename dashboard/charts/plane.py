@@ -1,8 +1,9 @@
-"""The PaO₂-PaCO₂ picture: where this patient has been, where the target lies, where the next gas will probably fall.
+"""The PaO₂-PaCO₂ picture: where this patient has been, where the target lies, where the next gas will
+probably fall.
 
-PaO₂ runs across on a log axis, PaCO₂ up, and the pH that belongs to each PaCO₂ at the last gas's base excess is marked
-along the right. Measured gases are solid and dated; the forecast is two bands and a hollow mark; the target is a
-labelled outline. Colours are names, resolved where the picture is drawn (`dashboard.live`).
+PaO₂ runs across on a log axis, PaCO₂ up, and the pH that belongs to each PaCO₂ at the last gas's base excess
+is marked along the right. Measured gases are solid and dated; the forecast is two bands and a hollow mark;
+the target is a labelled outline. Colours are names, resolved where the picture is drawn (`dashboard.live`).
 """
 
 from collections.abc import Sequence
@@ -16,14 +17,21 @@ from dashboard.charts.labels import free_sides
 from dashboard.wording import QUANTITY_LABELS, Units, clock_text
 from engine.forecast import Forecast
 from engine.physics.acid_base import ph_at_standard_base_excess, standard_base_excess_mmol_per_l
-from engine.record import BloodGas, Case, Target
+from engine.record import POSSIBLE, BloodGas, Case, Target
 
 Array = NDArray[np.float64]
 Trace = dict[str, Any]
 
 SHARES = (0.9, 0.5)  # outer band first, so that the inner one lies on top
 _BAND_OPACITY = {0.9: 0.16, 0.5: 0.30}
-_PAO2_TICKS = {"mmHg": (20, 30, 40, 50, 60, 80, 100, 150, 200, 300, 400, 600), "kPa": (3, 4, 5, 6, 8, 10, 13, 20, 30, 50, 80)}
+_NARROW = 4.0  # a picture whose ends differ by less has room for more marks
+_PAO2_TICKS = {
+    ("mmHg", False): (20, 30, 40, 50, 60, 80, 100, 150, 200, 300, 400, 600),
+    ("mmHg", True): (*range(20, 100, 10), *range(100, 200, 20), *range(200, 600, 50)),
+    ("kPa", False): (3, 4, 5, 6, 8, 10, 13, 20, 30, 40, 60, 80),
+    ("kPa", True): (*range(2, 16), *range(16, 30, 2), *range(30, 80, 5)),
+}
+_PH_STEPS, _MOST_PH_MARKS = (0.02, 0.05, 0.1, 0.2, 0.5, 1.0), 11
 _LEAST_PACO2_SPAN_MMHG = 36.0  # so that scatter alone does not fill the picture
 _LEAST_PAO2_RATIO = 2.6
 _BEYOND = (1.0, 2000.0)  # mmHg: where an open end of the target is drawn, outside any picture
@@ -71,8 +79,10 @@ class _Window:
         return float(np.log(pao2_mmhg / x0) / np.log(x1 / x0)), (paco2_mmhg - y0) / (y1 - y0)
 
 
-def _window(points: Sequence[tuple[datetime, BloodGas]], forecast: Forecast | None, target: Target | None) -> _Window:
-    """Large enough for every gas, the outer band and the closed ends of the target; never below the least span."""
+def _window(
+    points: Sequence[tuple[datetime, BloodGas]], forecast: Forecast | None, target: Target | None
+) -> _Window:
+    """Holds every gas, the outer band and the closed ends of the target; never below the least span."""
     pao2 = [gas.pao2_mmhg for _, gas in points]
     paco2 = [gas.paco2_mmhg for _, gas in points]
     for quantity, held in (("pao2_mmhg", pao2), ("paco2_mmhg", paco2)):
@@ -94,14 +104,14 @@ def _wide_span(values: Sequence[float]) -> tuple[float, float]:
     low, high = min(values), max(values)
     span = max((high - low) * 1.24, _LEAST_PACO2_SPAN_MMHG)
     centre = (low + high) / 2
-    return max(centre - span / 2, 0.0), centre + span / 2
+    return max(centre - span / 2, 0.0), min(centre + span / 2, POSSIBLE["paco2_mmhg"][1])
 
 
 def _scaled(values_mmhg: Sequence[float] | Array, units: Units) -> list[float]:
     return [round(units.tension(float(value)), 4) for value in values_mmhg]
 
 
-# ----------------------------------------------------------------------------------------------------------- target
+# ----------------------------------------------------------------------------------------------------- target
 
 
 def _target(target: Target | None, window: _Window, units: Units) -> list[Trace]:
@@ -128,8 +138,8 @@ def _target(target: Target | None, window: _Window, units: Units) -> list[Trace]
         },
         _words(
             "target",
-            max(x[0], window.pao2[0]),
-            min(y[1], window.paco2[1]),
+            max(x[0], window.pao2[0] * 1.015),
+            min(y[1], window.paco2[1]) - 0.012 * (window.paco2[1] - window.paco2[0]),
             "bottom right",
             "@target",
             units,
@@ -152,11 +162,11 @@ def _words(text: str, pao2_mmhg: float, paco2_mmhg: float, side: str, colour: st
     }
 
 
-# --------------------------------------------------------------------------------------------------------- forecast
+# --------------------------------------------------------------------------------------------------- forecast
 
 
 def _forecast_traces(forecast: Forecast | None, window: _Window, units: Units) -> list[Trace]:
-    """Bands of the next gas; where one of the two quantities is not forecast, the band runs across the picture."""
+    """Bands of the next gas; where one of the two is not forecast, the band runs across the picture."""
     if forecast is None:
         return []
     traces: list[Trace] = []
@@ -168,11 +178,11 @@ def _forecast_traces(forecast: Forecast | None, window: _Window, units: Units) -
     if pao2 is not None and paco2 is not None:
         traces += _expected(forecast, pao2.median, paco2.median, units)
     elif paco2 is not None:
-        middle = float(np.sqrt(window.pao2[0] * window.pao2[1]))
-        traces.append(_words("PaO₂ not forecast", middle, paco2.median, "middle center", "@forecast", units))
+        left = window.pao2[0] * 1.02
+        traces.append(_words("PaO₂ not forecast", left, paco2.median, "middle right", "@forecast", units))
     elif pao2 is not None:
-        middle = sum(window.paco2) / 2
-        traces.append(_words("PaCO₂ not forecast", pao2.median, middle, "middle center", "@forecast", units))
+        low = window.paco2[0]
+        traces.append(_words("PaCO₂ not forecast", pao2.median, low, "top center", "@forecast", units))
     return traces
 
 
@@ -202,7 +212,9 @@ def _band(outline: tuple[Array, Array], share: float, units: Units) -> list[Trac
         "hoverinfo": "skip",
     }
     top = int(np.argmax(paco2_mmhg))
-    label = _words(f"{share:.0%}".replace("%", " %"), pao2_mmhg[top], paco2_mmhg[top], "top center", "@forecast", units)
+    label = _words(
+        f"{share:.0%}".replace("%", " %"), pao2_mmhg[top], paco2_mmhg[top], "top center", "@forecast", units
+    )
     label["textfont"]["size"] = 12
     return [band, label]
 
@@ -228,16 +240,17 @@ def _expected(forecast: Forecast, pao2_mmhg: float, paco2_mmhg: float, units: Un
             "mode": "markers",
             "x": _scaled([pao2_mmhg], units),
             "y": _scaled([paco2_mmhg], units),
-            "marker": {"symbol": "circle-open", "size": 15, "color": "@forecast", "line": {"width": 3}},
+            "marker": {"symbol": "circle-open", "size": 21, "color": "@forecast", "line": {"width": 3}},
             "hovertext": [
-                f"expected: PaO₂ {units.tension_text(pao2_mmhg)}, PaCO₂ {units.tension_text(paco2_mmhg)} {units.gas}"
+                f"expected: PaO₂ {units.tension_text(pao2_mmhg)} {units.gas}, "
+                f"PaCO₂ {units.tension_text(paco2_mmhg)} {units.gas}"
             ],
             "hoverinfo": "text",
         },
     ]
 
 
-# --------------------------------------------------------------------------------------------------------- measured
+# --------------------------------------------------------------------------------------------------- measured
 
 
 def _measured(
@@ -299,14 +312,14 @@ def _measured_words(time: datetime, gas: BloodGas, units: Units, now: datetime) 
     return "<br>".join(parts)
 
 
-# ----------------------------------------------------------------------------------------------------------- layout
+# ----------------------------------------------------------------------------------------------------- layout
 
 
 def _layout(
     case: Case, points: Sequence[tuple[datetime, BloodGas]], window: _Window, units: Units
 ) -> dict[str, Any]:
-    ticks = [tick for tick in _PAO2_TICKS[units.gas]]
-    axis = {
+    ticks = _PAO2_TICKS[units.gas, window.pao2[1] / window.pao2[0] < _NARROW]
+    axis: dict[str, Any] = {
         "showline": True,
         "linecolor": "@quiet",
         "ticks": "outside",
@@ -324,7 +337,7 @@ def _layout(
         "margin": {"l": 58, "r": 58, "t": 8, "b": 44},
         "paper_bgcolor": "@paper",
         "plot_bgcolor": "@paper",
-        "font": {"family": "\"Source Sans\", sans-serif", "color": "@ink", "size": 13},
+        "font": {"family": '"Source Sans", sans-serif', "color": "@ink", "size": 13},
         "hoverlabel": {"bgcolor": "@wash", "bordercolor": "@quiet", "font": {"color": "@ink", "size": 13}},
         "modebar": {"orientation": "h", "bgcolor": "@paper/0", "color": "@quiet", "activecolor": "@forecast"},
         "dragmode": "zoom",
@@ -332,12 +345,11 @@ def _layout(
         | {
             "type": "log",
             "range": [low_x, high_x],
-            "tickvals": ticks,
+            "tickvals": list(ticks),
             "ticktext": [f"{tick:g}" for tick in ticks],
             "title": axis["title"] | {"text": f"PaO₂, {units.gas} (log scale)"},
         },
-        "yaxis": axis
-        | {"range": [low_y, high_y], "title": axis["title"] | {"text": f"PaCO₂, {units.gas}"}},
+        "yaxis": axis | {"range": [low_y, high_y], "title": axis["title"] | {"text": f"PaCO₂, {units.gas}"}},
     }
     if points:
         layout["yaxis2"] = axis | _ph_axis(points[-1][1], window, units)
@@ -350,8 +362,9 @@ def _ph_axis(gas: BloodGas, window: _Window, units: Units) -> dict[str, Any]:
     paco2 = np.geomspace(max(window.paco2[0] * 0.5, 2.0), window.paco2[1] * 1.6, 400)
     excess = standard_base_excess_mmol_per_l(gas.ph, gas.paco2_mmhg)
     ph = np.asarray(ph_at_standard_base_excess(paco2, excess))
-    marks = np.round(np.arange(6.6, 8.0, 0.05), 2)
-    marks = marks[(marks > ph.min()) & (marks < ph.max())]
+    seen = ph[(paco2 >= window.paco2[0]) & (paco2 <= window.paco2[1])]
+    step = next(step for step in _PH_STEPS if np.ptp(seen) / step < _MOST_PH_MARKS)
+    marks = np.arange(np.ceil(ph.min() / step), ph.max() / step) * step
     places = np.interp(marks, ph[::-1], paco2[::-1])
     return {
         "overlaying": "y",
@@ -359,5 +372,5 @@ def _ph_axis(gas: BloodGas, window: _Window, units: Units) -> dict[str, Any]:
         "matches": "y",
         "showgrid": False,
         "tickvals": _scaled(places, units),
-        "ticktext": [f"{mark:.2f}" for mark in marks],
+        "ticktext": [f"{mark:.{1 if step in (0.1, 0.2, 0.5, 1.0) else 2}f}" for mark in marks],
     }

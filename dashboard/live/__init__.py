@@ -1,11 +1,11 @@
 """The live picture: a plain figure dict drawn in place, so that zoom survives and a change repaints quickly.
 
-The stock chart element is mounted anew at every change of data and loses its zoom. This small component keeps one node
-and hands each new figure to ``Plotly.react``. The plotting script is the one inside the installed plotly package and is
-served from this machine (`script_route`); nothing is asked of any other.
+The stock chart element is mounted anew at every change of data and loses its zoom. This small component keeps
+one node and hands each new figure to ``Plotly.react``. The plotting script is the one inside the installed
+plotly package and is served from this machine (`script_route`); nothing is asked of any other.
 
-Colours in a figure are names from `wording.PALETTES` ("@ink", "@forecast/0.2" with opacity): the browser turns them
-into the light or dark value, also when the page changes its scheme while it stands open.
+Colours in a figure are names from `wording.PALETTES` ("@ink", "@forecast/0.2" with opacity): the browser
+turns them into the light or dark value, also when the page changes its scheme while it stands open.
 """
 
 import json
@@ -37,7 +37,9 @@ def script_route() -> Route:
     async def script(request: Request) -> FileResponse:
         with as_file(files("plotly") / "package_data" / "plotly.min.js") as path:
             return FileResponse(
-                path, media_type="text/javascript", headers={"Cache-Control": "public, max-age=31536000, immutable"}
+                path,
+                media_type="text/javascript",
+                headers={"Cache-Control": "public, max-age=31536000, immutable"},
             )
 
     return Route(script_path(), script)

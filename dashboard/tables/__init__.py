@@ -1,1 +1,1 @@
-"""Engine results as small tables in HTML text, every value escaped; nothing here knows the screen library."""
+"""Engine results as small tables in HTML text, every value escaped, without the screen library."""

@@ -17,24 +17,36 @@ def tried_line(forecast: Forecast, effort_stops: bool, now: datetime) -> str:
     words = "; ".join(changes) if changes else "nothing; all as charted"
     return (
         f'<p class="fb-tried"><b>Tried:</b> {escape(words)}. '
-        f"<span>Assumes that nothing else has changed since the gas at {clock_text(forecast.made_from, now)}.</span></p>"
+        f"<span>Assumes that nothing else has changed since the gas at "
+        f"{clock_text(forecast.made_from, now)}.</span></p>"
     )
+
+
+def refused_line(says: str, used: str) -> str:
+    """Why a typed number is not used, and the one that is."""
+    return f'<div class="fb-refused" role="alert">{escape(says)} Still using {escape(used)}.</div>'
+
+
+def note(says: str, *, good: bool = False) -> str:
+    """What came of an upload, or why there is no forecast."""
+    return f'<div class="fb-alert{" fb-good" if good else ""}" role="alert">{escape(says)}</div>'
 
 
 def recheck_lines(forecast: Forecast, now: datetime) -> str:
     """The two times to look again, counted from a change made now."""
     recheck, lines = forecast.recheck, []
     for minutes, what in (
-        (recheck.early_minutes, "Early look: right way, safe?"),
-        (recheck.settled_minutes, "Settled gas"),
+        (recheck.early_minutes, "early look: right way, safe?"),
+        (recheck.settled_minutes, "settled gas"),
     ):
         if minutes is not None:
             lines.append(
-                f"<li><b>{clock_after(now, minutes)}</b> {what} <small>after {span_text(minutes)}</small></li>"
+                f"<span><b>{clock_after(now, minutes)}</b>{what}<br>after {span_text(minutes)}</span>"
             )
-    body = f"<ul>{''.join(lines)}</ul>" if lines else ""
+    body = f'<div class="fb-times">{"".join(lines)}</div>' if lines else ""
     return (
-        f'<div class="fb-recheck"><h3>Look again <small>if changed now, {clock_text(now, now)}</small></h3>'
+        '<div class="fb-side fb-recheck">'
+        f"<h3>Look again <small>if changed now, {clock_text(now, now)}</small></h3>"
         f"{body}<p>{escape(recheck.reason)}</p></div>"
     )
 
@@ -44,7 +56,7 @@ def cautions_list(forecast: Forecast) -> str:
     if not forecast.cautions:
         return ""
     lines = "".join(f"<li>{escape(text)}</li>" for text in forecast.cautions)
-    return f'<div class="fb-cautions"><h3>Cautions</h3><ul>{lines}</ul></div>'
+    return f'<div class="fb-side fb-cautions"><h3>Cautions</h3><ul>{lines}</ul></div>'
 
 
 def checks_list(checks: Sequence[Check]) -> str:
@@ -55,4 +67,4 @@ def checks_list(checks: Sequence[Check]) -> str:
     lines = "".join(
         f"<li>{escape(check.says)} <small>{escape(check.source)}</small></li>" for check in doubtful
     )
-    return f'<div class="fb-checks"><h3>Doubtful in the chart</h3><ul>{lines}</ul></div>'
+    return f'<div class="fb-side fb-checks"><h3>Doubtful in the chart</h3><ul>{lines}</ul></div>'

@@ -9,23 +9,30 @@ from engine.record import Case, Target
 
 
 def expected_table(case: Case, forecast: Forecast, units: Units, now: datetime) -> str:
-    """Row one: the last usable gas, solid. Row two: the next gas with 50 and 90 % intervals, in the forecast's blue."""
+    """Row one: the last usable gas, solid. Row two: the next gas with 50 and 90 % intervals, in blue."""
     heads = "".join(_head(quantity, case.target, units) for quantity in QUANTITIES)
     measured = "".join(
-        f'<td class="fb-measured">{units.quantity_text(quantity, forecast.now[quantity])}</td>' for quantity in QUANTITIES
+        f'<td class="fb-measured">{units.quantity_text(quantity, forecast.now[quantity])}</td>'
+        for quantity in QUANTITIES
     )
     expected = "".join(_expected(quantity, forecast, units) for quantity in QUANTITIES)
     return (
         '<table class="fb-expected"><thead><tr><td></td>'
         f"{heads}</tr></thead><tbody>"
-        f'<tr><th scope="row">Now<small>measured {clock_text(forecast.made_from, now)}</small></th>{measured}</tr>'
-        f'<tr class="fb-forecast"><th scope="row">Expected<small>{_when(forecast)}</small></th>{expected}</tr>'
+        f'<tr><th scope="row">Now<small>measured {clock_text(forecast.made_from, now)}</small></th>'
+        f"{measured}</tr>"
+        f'<tr class="fb-forecast"><th scope="row">Expected<small>{_when(forecast)}</small></th>'
+        f"{expected}</tr>"
         "</tbody></table>"
     )
 
 
 def _when(forecast: Forecast) -> str:
-    return "next gas, settled" if forecast.minutes is None else f"gas {forecast.minutes:.0f} min after the change"
+    return (
+        "next gas, settled"
+        if forecast.minutes is None
+        else f"gas {forecast.minutes:.0f} min after the change"
+    )
 
 
 def _head(quantity: str, target: Target | None, units: Units) -> str:
@@ -53,9 +60,9 @@ def _expected(quantity: str, forecast: Forecast, units: Units) -> str:
     chance = forecast.in_target[quantity.removesuffix("_mmhg")]
     inside = "" if chance is None else f"<span>{chance_text(chance)} in target</span>"
     return (
-        f"<td><b>{units.quantity_text(quantity, draws.median)}</b>"
+        f'<td><div class="fb-spread"><b>{units.quantity_text(quantity, draws.median)}</b>'
         f'<div class="fb-intervals"><span><i>50 %</i> {_interval(quantity, draws, 0.5, units)}</span>'
-        f"<span><i>90 %</i> {_interval(quantity, draws, 0.9, units)}</span>{inside}</div></td>"
+        f"<span><i>90 %</i> {_interval(quantity, draws, 0.9, units)}</span>{inside}</div></div></td>"
     )
 
 

@@ -16,10 +16,17 @@ def gases_table(case: Case, estimates: Estimates, units: Units, now: datetime) -
 
     ``estimates`` gives the textbook numbers of the gas in an entry; P/F and base excess are taken from there.
     """
-    heads = ("", "Drawn", "pH", f"PaCO₂ {units.gas}", f"PaO₂ {units.gas}", "SaO₂ %", f"P/F {units.gas}")
-    heads += ("Base excess mmol/L", f"Hb {units.haemoglobin}", "FiO₂ %", "Minute volume L/min", "Settings then")
+    heads: tuple[str, ...] = ("", "Drawn", "pH", f"PaCO₂ {units.gas}", f"PaO₂ {units.gas}", "SaO₂ %")
+    heads += (
+        f"P/F {units.gas}",
+        "Base excess mmol/L",
+        f"Hb {units.haemoglobin}",
+        "FiO₂ %",
+        "Minute volume L/min",
+        "Settings then",
+    )
     usable = case.usable_gases()
-    lines = []
+    lines: list[str] = []
     for number, (entry, settings) in enumerate(case.entries_with_settings()):
         if entry.gas is not None:
             cells = _cells(entry, settings, {e.name: e for e in estimates(number)}, units)
@@ -29,7 +36,7 @@ def gases_table(case: Case, estimates: Estimates, units: Units, now: datetime) -
 
 
 def _cells(entry: Entry, settings: Settings, found: dict[str, Estimate], units: Units) -> list[str]:
-    gas, measured = entry.gas, entry.measured
+    gas = entry.gas
     assert gas is not None
     return [
         f"{gas.ph:.2f}",
@@ -40,7 +47,7 @@ def _cells(entry: Entry, settings: Settings, found: dict[str, Estimate], units: 
         _signed(_value(found, "standard_base_excess_mmol_per_l")),
         units.haemoglobin_text(gas.hb_g_per_dl),
         percent_text(settings.fio2),
-        _one_decimal(measured.minute_volume_l_per_min if measured else None),
+        _one_decimal(_value(found, "minute_ventilation_l_per_min")),
     ]
 
 

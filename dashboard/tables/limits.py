@@ -5,7 +5,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from html import escape
 
-from dashboard.wording import chance_text, percent_text
+from dashboard.wording import LIMIT_LABELS, Units, chance_text
 from engine.limits import Limit
 
 _NUMBERS = re.compile(r"\d+(?:\.\d+)?")
@@ -13,108 +13,128 @@ _NUMBERS = re.compile(r"\d+(?:\.\d+)?")
 
 @dataclass(frozen=True, slots=True)
 class Margin:
-    """How far a value is from its nearest limit: ``left`` in its own unit (negative once past it) and as a share."""
+    """How far a value is from the nearer ``end`` of its limit, in its own unit and as a share; negative once past."""
 
     left: float
     share: float
+    end: float
+    above: bool
 
 
 def margin_of(limit: Limit) -> Margin | None:
     """The margin of one row; ``None`` where the value, the limit or the verdict is not known.
 
-    A limit such as "4-8" has two ends and the nearer one counts. Which side of a single limit is the good one, the
-    row's own verdict says: ``ok`` true means that the distance is room, false that it is excess.
+    A limit such as "4 to 8 mL/kg" has two ends and the nearer one counts. Which side of a single limit is the
+    good one, the row's own verdict says: ``ok`` true means that the distance is room, false that it is excess.
+    The share is of the limit itself; for pH, of its hydrogen ions.
     """
-    if limit.value is None or limit.limit is None or limit.ok is None:
+    value, ends = limit.value, _ends(limit)
+    if value is None or limit.ok is None or not ends:
         return None
-    ends = [limit.limit] if isinstance(limit.limit, int | float) else [float(n) for n in _NUMBERS.findall(limit.limit)]
-    if not ends:
-        return None
-    end = min(ends, key=lambda candidate: abs(candidate - limit.value) if limit.value is not None else 0.0)
-    distance = abs(end - limit.value)
-    left = distance if limit.ok else -distance
-    return Margin(left=left, share=left / abs(end) if end else left)
+    end = min(ends, key=lambda candidate: abs(candidate - value))
+    distance = abs(end - value)
+    share = 1 - 10**-distance if limit.name.startswith("ph_") else distance / abs(end) if end else distance
+    sign = 1 if limit.ok else -1
+    return Margin(left=sign * distance, share=sign * share, end=end, above=value > end)
+
+
+def _ends(limit: Limit) -> list[float]:
+    if limit.limit is None:
+        return []
+    if isinstance(limit.limit, str):
+        return [float(number) for number in _NUMBERS.findall(limit.limit)[:2]]
+    return [float(limit.limit)]
 
 
 def in_order(limits: Sequence[Limit]) -> list[Limit]:
-    """Breaches first (hard before soft), then by how little room is left, the unknown ones last."""
+    """Past hard limits, past soft ones, then by how little room is left, and the unknown ones last."""
 
-    def place(limit: Limit) -> tuple[int, int, float]:
+    def place(limit: Limit) -> tuple[int, float]:
         margin = margin_of(limit)
-        rank = 0 if limit.ok is False else 1 if limit.ok else 2
-        return rank, 0 if limit.level == "hard" or rank else 1, margin.share if margin else 9.0
+        rank = 2 if limit.ok else 3 if limit.ok is None else 0 if limit.level == "hard" else 1
+        return rank, margin.share if margin else 9.0
 
     return sorted(limits, key=place)
 
 
-def nearest_limit(limits: Sequence[Limit]) -> str:
-    """The one that binds first, readable from a metre."""
+def nearest_of(limits: Sequence[Limit]) -> Limit | None:
+    """The hard limit that binds first, the soft ones only where no hard one is known."""
     known = [limit for limit in in_order(limits) if limit.ok is not None]
-    if not known:
+    return next((limit for limit in known if limit.level == "hard"), known[0] if known else None)
+
+
+def nearest_limit(limits: Sequence[Limit], units: Units) -> str:
+    """The nearest hard limit, readable from a metre."""
+    limit = nearest_of(limits)
+    if limit is None:
         return '<div class="fb-nearest"><small>Nearest limit</small><b>none known yet</b></div>'
-    limit = known[0]
     breach = limit.ok is False
-    title = f"Past the {limit.level} limit" if breach else "Nearest limit"
+    title = f"Past a {limit.level} limit" if breach else f"Nearest {limit.level} limit"
     return (
         f'<div class="fb-nearest{" fb-breach" if breach else ""}"><small>{title}</small>'
-        f"<b>{escape(_name(limit))} {_number(limit)}</b><span>{escape(_margin_text(limit))}</span></div>"
+        f"<b>{_name(limit)} {_value(limit, units)}</b><span>{_margin(limit, units)}</span></div>"
     )
 
 
-def limits_table(limits: Sequence[Limit]) -> str:
+def limits_at_a_glance(limits: Sequence[Limit], units: Units, most: int = 4) -> str:
+    """The next few after the nearest, one short line each; the full table stands further down."""
+    nearest = nearest_of(limits)
+    known = [limit for limit in in_order(limits) if limit.ok is not None and limit is not nearest][:most]
+    lines = "".join(
+        f'<tr class="fb-{_verdict(limit)}"><th scope="row">{_name(limit)}</th>'
+        f"<td>{_value(limit, units)}</td><td>{_margin(limit, units)}</td></tr>"
+        for limit in known
+    )
+    return f'<table class="fb-glance"><tbody>{lines}</tbody></table>' if lines else ""
+
+
+def limits_table(limits: Sequence[Limit], units: Units) -> str:
     """One line a limit: verdict in words, value, limit, margin, what it says and where it is from."""
-    lines = "".join(_line(limit) for limit in in_order(limits))
+    lines = "".join(_line(limit, units) for limit in in_order(limits))
     heads = ("", "Limit on", "Value", "Limit", "Margin", "Chance inside", "What it says", "Source")
     head = "".join(f'<th scope="col">{text}</th>' for text in heads)
     return f'<table class="fb-limits"><thead><tr>{head}</tr></thead><tbody>{lines}</tbody></table>'
 
 
-def _line(limit: Limit) -> str:
-    verdict = {True: "inside", False: "past", None: "unknown"}[limit.ok]
+def _line(limit: Limit, units: Units) -> str:
     cells = (
         _name(limit),
-        _number(limit),
-        f"{_limit_number(limit)} ({limit.level})",
-        _margin_text(limit),
+        _value(limit, units),
+        f"{_limit(limit, units)} ({limit.level})",
+        _margin(limit, units),
         chance_text(limit.probability),
-        limit.says,
-        limit.source,
+        escape(limit.says),
+        escape(limit.source),
     )
-    body = "".join(f"<td>{escape(cell)}</td>" for cell in cells)
+    body = "".join(f"<td>{cell}</td>" for cell in cells)
+    verdict = _verdict(limit)
     return f'<tr class="fb-{verdict}"><th scope="row">{verdict}</th>{body}</tr>'
 
 
-_NAMES: dict[str, str] = {}
+def _verdict(limit: Limit) -> str:
+    return "unknown" if limit.ok is None else "inside" if limit.ok else "past"
 
 
 def _name(limit: Limit) -> str:
-    return _NAMES.get(limit.name, limit.name.replace("_", " "))
+    return escape(LIMIT_LABELS.get(limit.name, limit.name.replace("_", " ")))
 
 
-def _number(limit: Limit) -> str:
-    return "–" if limit.value is None else _with_unit(limit.value, limit)
+def _value(limit: Limit, units: Units) -> str:
+    return "–" if limit.value is None else _number(limit.value, limit, units)
 
 
-def _limit_number(limit: Limit) -> str:
-    if limit.limit is None:
-        return "–"
-    return limit.limit if isinstance(limit.limit, str) else _with_unit(limit.limit, limit)
+def _limit(limit: Limit, units: Units) -> str:
+    ends = _ends(limit)
+    return " to ".join(_number(end, limit, units) for end in ends) if ends else "–"
 
 
-def _with_unit(value: float, limit: Limit) -> str:
-    if limit.name == "fio2":
-        return f"{percent_text(value)} %"
-    return f"{_digits(value)} {limit.unit}".rstrip()
-
-
-def _digits(value: float) -> str:
-    return f"{value:.2f}" if abs(value) < 10 and value != round(value, 1) else f"{value:.1f}".removesuffix(".0")
-
-
-def _margin_text(limit: Limit) -> str:
+def _margin(limit: Limit, units: Units) -> str:
     margin = margin_of(limit)
     if margin is None:
         return "not known"
-    word = "left to" if margin.left >= 0 else "past"
-    amount = _with_unit(abs(margin.left), limit)
-    return f"{amount} {word} {_limit_number(limit)}"
+    word = "left to" if limit.ok else "above" if margin.above else "below"
+    return f"{_number(abs(margin.left), limit, units)} {word} {_number(margin.end, limit, units)}"
+
+
+def _number(value: float, limit: Limit, units: Units) -> str:
+    return escape(units.limit_text(value, limit.unit, limit.name))

@@ -7,19 +7,29 @@ from dashboard.wording import OLD_HOURS, age_text, clock_text
 from engine.record import Case
 
 
-def who_line(case: Case, demo: bool, now: datetime) -> str:
-    """Bed label, sex, height, last usable gas with its age, age of the settings; a demo is marked as one."""
+def who_line(case: Case, demo: bool, live: bool, now: datetime) -> str:
+    """Bed label, sex, height, last usable gas and settings with their ages; a demo is marked as one.
+
+    ``now`` is the moment the screen speaks of. Where it is not ``live``, a file from another day is in hand,
+    and the line says so.
+    """
     patient = case.patient
     person = [patient.sex or "sex not charted"]
     person.append(f"{patient.height_cm:g} cm" if patient.height_cm else "height not charted")
-    parts = [f"<b>{escape(case.label)}</b>", f"<span>{escape(', '.join(person))}</span>", _last_gas(case, now)]
+    parts = [
+        f"<b>{escape(case.label)}</b>",
+        f"<span>{escape(', '.join(person))}</span>",
+        _last_gas(case, now),
+    ]
     settings = settings_changed_at(case)
     if settings is not None:
         parts.append(
             f"<span>settings since {clock_text(settings, now)} <em>{age_text(settings, now)}</em></span>"
         )
+    if not live:
+        parts.append(f'<span class="fb-old">Not live: read as of {now:%d %b %Y %H:%M}, its last entry</span>')
     if demo:
-        parts.append('<span class="fb-demo">Demo: an invented patient, times moved to the present</span>')
+        parts.append('<span class="fb-demo">Demo: invented patient</span>')
     return f'<div class="fb-who">{"".join(parts)}</div>'
 
 
@@ -30,7 +40,9 @@ def _last_gas(case: Case, now: datetime) -> str:
     drawn = case.entries[gases[-1]].gas_time
     age = f"<em>{age_text(drawn, now)}</em>"
     if now - drawn > timedelta(hours=OLD_HOURS):
-        age = f'<em class="fb-old">{age_text(drawn, now)}: older than {OLD_HOURS} h, no basis for a change</em>'
+        age = (
+            f'<em class="fb-old">{age_text(drawn, now)}: older than {OLD_HOURS} h, no basis for a change</em>'
+        )
     return f"<span>last gas {clock_text(drawn, now)} {age}</span>"
 
 

@@ -1,1 +1,1 @@
-"""The screens, one file each, one ``show`` each: they ask the session and the engine, and lay out the answers."""
+"""The screens, one ``show`` each: they ask the session and the engine and lay out the answers."""

@@ -1,5 +1,6 @@
 """Bed: one patient's gases so far, and what the next one will probably read if something is changed."""
 
+from contextlib import suppress
 from datetime import datetime
 
 import streamlit as st
@@ -7,23 +8,38 @@ import streamlit as st
 from dashboard import cached, live, session
 from dashboard.charts.plane import plane
 from dashboard.session import Bed, Held
-from dashboard.tables.cautions import cautions_list, checks_list, recheck_lines, tried_line
+from dashboard.tables.cautions import (
+    cautions_list,
+    checks_list,
+    note,
+    recheck_lines,
+    refused_line,
+    tried_line,
+)
 from dashboard.tables.expected import expected_table, in_words
 from dashboard.tables.gases import gases_table
-from dashboard.tables.limits import limits_table, nearest_limit
+from dashboard.tables.limits import limits_at_a_glance, limits_table, nearest_limit
 from dashboard.tables.who import who_line
-from dashboard.wording import FIELDS, SAFETY, SETTING_LABELS, Field, fields_to_try, setting_text, zone_text
+from dashboard.wording import (
+    SAFETY,
+    SETTING_LABELS,
+    Field,
+    field_label,
+    fields_to_try,
+    setting_text,
+    zone_text,
+)
 from engine.fit import NothingToSay
 from engine.forecast import Forecast
 from engine.reading.case_file import text_from_case
 from engine.record import CHOICES, Case, Impossible
 
-PICTURE_HEIGHT_PX = 418
+PICTURE_HEIGHT_PX = 470
 
 
 def show() -> None:
     """One patient, one change, one forecast."""
-    state, now = session.bed(), session.now()
+    state, now = session.bed(), session.moment()
     with st.container(key="top", horizontal=True, vertical_alignment="center"):
         _who()
         _choices(state)
@@ -35,11 +51,17 @@ def show() -> None:
         with trial, st.container(key="trial"):
             _trial(state, held.case)
         with result:
-            _result(state, held.case, now)
+            if session.is_unread():
+                with st.empty().container():  # clears what stood here of the patient before
+                    _first_look(state, held.case, now)
+                session.mark_read()
+                st.rerun()
+            with st.container():
+                _result(state, held.case, now)
     st.html(f'<div class="fb-safety">{SAFETY}</div>')
 
 
-# ----------------------------------------------------------------------------------------------------- top of the page
+# -------------------------------------------------------------------------------------------- top of the page
 
 
 @st.fragment(run_every="60s")
@@ -47,7 +69,7 @@ def _who() -> None:
     """Ages go on counting while the screen stands untouched."""
     held = session.bed().in_hand
     if held is not None:
-        st.html(who_line(held.case, held.demo, session.now()))
+        st.html(who_line(held.case, held.demo, held.live(session.now()), session.moment()))
 
 
 def _choices(state: Bed) -> None:
@@ -69,7 +91,11 @@ def _choices(state: Bed) -> None:
 
 def _file(state: Bed) -> None:
     st.file_uploader(
-        "Open a case file", type=["json"], key=session.upload_key(), on_change=session.take_upload, max_upload_size=5
+        "Open a case file",
+        type=["json"],
+        key=session.upload_key(),
+        on_change=session.take_upload,
+        max_upload_size=5,
     )
     if state.in_hand is not None:
         st.download_button(
@@ -95,7 +121,7 @@ def _units(state: Bed) -> None:
         )
 
 
-# ------------------------------------------------------------------------------------------------------ try a change
+# ----------------------------------------------------------------------------------------------- try a change
 
 
 def _trial(state: Bed, case: Case) -> None:
@@ -111,62 +137,99 @@ def _trial(state: Bed, case: Case) -> None:
     st.toggle("If breathing effort stops", key="effort_stops", on_change=session.toggle_effort)
     with st.container(horizontal=True, key="steps"):
         st.button("Undo", key="undo", on_click=session.undo, disabled=not state.earlier)
-        st.button("As charted", key="as_charted", on_click=session.as_charted, disabled=not session.tries_something())
+        st.button(
+            "As charted",
+            key="as_charted",
+            on_click=session.as_charted,
+            disabled=not session.tries_something(),
+        )
 
 
 def _number(state: Bed, field: Field) -> None:
     with st.container(horizontal=True, vertical_alignment="bottom", key=f"field_{field.name}", gap="xxsmall"):
         st.text_input(
-            f"{field.label}{', ' + field.unit if field.unit else ''}",
+            field_label(field, state.tried, session.charted()),
             key=session.field_key(field.name),
             on_change=session.type_number,
             args=(field.name,),
         )
-        for sign, direction in (("−", -1), ("+", 1)):
+        for word, direction in (("less", -1), ("more", 1)):
             st.button(
-                sign,
-                key=f"step_{field.name}_{direction:+d}",
+                f"{field.label}: {word}",  # shown as − and + by the style sheet
+                key=f"step_{word}_{field.name}",
                 on_click=session.step_number,
                 args=(field.name, direction),
-                help=None,
             )
     if field.name in state.refused:
         used = setting_text(field.name, session.in_use(field.name))
-        st.html(f'<div class="fb-refused" role="alert">{state.refused[field.name]} Still using {used}.</div>')
+        st.html(refused_line(state.refused[field.name], used))
 
 
-# ----------------------------------------------------------------------------------------------------------- the result
+# ------------------------------------------------------------------------------------------------- the result
+
+
+def _first_look(state: Bed, case: Case, now: datetime) -> None:
+    """What is measured stands at once; the lung behind it takes some seconds."""
+    _upload_note(state)
+    gases = len(case.usable_gases())
+    with st.spinner(
+        f"Reading {gases} gases of this stay: some seconds at the first look at a patient.", show_time=True
+    ):
+        _picture(state, case, None, now)
+        _gases(state, case, now)
+        with suppress(NothingToSay):  # said where the forecast would stand
+            cached.fitted(case)
 
 
 def _result(state: Bed, case: Case, now: datetime) -> None:
-    if state.upload_says is not None:
-        good, says = state.upload_says
-        (st.success if good else st.error)(says if good else f"File not opened, nothing changed. {says}")
-    forecast = _forecast(state, case)
+    _upload_note(state)
+    forecast = _forecast(state, case, now)
     if forecast is not None:
-        st.html(expected_table(case, forecast, state.units, now))
-        st.html(tried_line(forecast, state.effort_stops, now))
+        st.html(
+            expected_table(case, forecast, state.units, now) + tried_line(forecast, state.effort_stops, now)
+        )
     picture, beside = st.columns([60, 40], gap="medium")
     with picture:
-        live.draw(
-            plane(case, forecast, state.units, now),
-            key="plane",
-            alt=in_words(forecast, state.units),
-            height_px=PICTURE_HEIGHT_PX,
-        )
+        _picture(state, case, forecast, now)
     with beside:
         if forecast is not None:
-            st.html(nearest_limit(forecast.limits))
-            st.html(recheck_lines(forecast, now))
-            _show(cautions_list(forecast))
+            st.html(_limits_and_times(forecast, state, now))
         _show(checks_list(cached.checks(case)))
     if forecast is not None:
-        st.html('<h2 class="fb-heading">Limits</h2>' + limits_table(forecast.limits))
-    zone = zone_text(now.tzinfo, now)
-    st.html(
-        f'<h2 class="fb-heading">Gases so far</h2><p class="fb-note">Clock times in {zone}.</p>'
-        + gases_table(case, lambda number: cached.estimates(case, number), state.units, now)
+        st.html('<h2 class="fb-heading">Limits</h2>' + limits_table(forecast.limits, state.units))
+    _gases(state, case, now)
+
+
+def _limits_and_times(forecast: Forecast, state: Bed, now: datetime) -> str:
+    return (
+        nearest_limit(forecast.limits, state.units)
+        + limits_at_a_glance(forecast.limits, state.units)
+        + recheck_lines(forecast, now)
+        + cautions_list(forecast)
     )
+
+
+def _picture(state: Bed, case: Case, forecast: Forecast | None, now: datetime) -> None:
+    live.draw(
+        plane(case, forecast, state.units, now),
+        key="plane",
+        alt=in_words(forecast, state.units),
+        height_px=PICTURE_HEIGHT_PX,
+    )
+
+
+def _gases(state: Bed, case: Case, now: datetime) -> None:
+    table = gases_table(case, lambda number: cached.estimates(case, number), state.units, now)
+    st.html(
+        '<h2 class="fb-heading">Gases so far</h2>'
+        f'<p class="fb-note">Clock times in {zone_text(now.tzinfo, now)}.</p>{table}'
+    )
+
+
+def _upload_note(state: Bed) -> None:
+    if state.upload_says is not None:
+        good, says = state.upload_says
+        st.html(note(says if good else f"File not opened, nothing changed. {says}", good=good))
 
 
 def _show(text: str) -> None:
@@ -174,15 +237,14 @@ def _show(text: str) -> None:
         st.html(text)
 
 
-def _forecast(state: Bed, case: Case) -> Forecast | None:
+def _forecast(state: Bed, case: Case, now: datetime) -> Forecast | None:
     """The forecast of what is being tried, or the reason for none on the screen."""
-    gases = len(case.usable_gases())
     try:
-        with st.spinner(f"Reading {gases} gases of this stay. The first look at a patient takes some seconds."):
-            return cached.forecast(case, state.tried, effort_stops=state.effort_stops)
+        with st.spinner("Working out the forecast."):
+            return cached.forecast(case, state.tried, at=now, effort_stops=state.effort_stops)
     except NothingToSay as why:
-        st.warning(f"No forecast: {why}")
+        st.html(note(f"No forecast: {why}"))
     except Impossible as why:
-        label = FIELDS[why.field].label if why.field in FIELDS else why.field
-        st.warning(f"No forecast of this change: {label} {why.value} cannot be; expected {why.expected}.")
+        label = SETTING_LABELS.get(why.field, why.field)
+        st.html(note(f"No forecast of this change: {label} {why.value} cannot be; expected {why.expected}."))
     return None
