@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 from engine.fit import Fit, NothingToSay, fits_along
 from engine.fit.sequence import settings_at
 from engine.forecast import LEVELS, predict
-from engine.reading.case_file import BadCase, read_case
+from engine.reading.case_file import BadCase, read_case, text_from_time
 from engine.record import Case, Entry
 
 Array = NDArray[np.float64]
@@ -80,8 +80,10 @@ def _replayed(path: Path, read_as: str, seed: int) -> tuple[list[dict[str, Any]]
     try:
         case = read_case(path)
         rows = list(rows_of(case, path.stem, read_as=read_as, seed=seed))
-    except (BadCase, NothingToSay, OSError, FloatingPointError) as reason:
+    except (BadCase, NothingToSay, OSError) as reason:
         return [], str(reason)
+    except Exception as fault:  # whatever befalls one case is named and must not stop the rest
+        return [], f"a fault of the program: {type(fault).__name__}: {fault}"
     return rows, None if rows else "fewer than two usable gases"
 
 
@@ -112,8 +114,8 @@ def _rows_of_gas(case: Case, name: str, fit: Fit, number: int, seed: int) -> Ite
         quantiles = np.quantile(draws[np.isfinite(draws)], LEVELS)
         yield {
             "case": name,
-            "time": entry.time.isoformat(),
-            "made_at": (case.entries[fit.gas_number] if change is None else case.entries[change]).time.isoformat(),
+            "time": text_from_time(entry.time),
+            "made_at": text_from_time(case.entries[fit.gas_number if change is None else change].time),
             "quantity": quantity,
             "measured": getattr(gas, quantity),
             **{f"q{round(100 * p):02d}": float(v) for p, v in zip(LEVELS, quantiles, strict=True)},

@@ -4,6 +4,7 @@ Between two gases it drifts (`engine.lung.drift`); each gas narrows it (`engine.
 draws and refits nothing. The same seed gives the same draws.
 """
 
+from collections import deque
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from datetime import datetime, timedelta
@@ -26,7 +27,7 @@ from engine.record import Case, Settings, Site
 Array = NDArray[np.float64]
 Rows = NDArray[np.int64]
 
-DRAWS = 2000
+DRAWS = 1000
 FIT_UNITS = 11  # V/Q nodes while fitting: within 0.02 % of PaO2 in the median lung, far below scatter
 SETTLED_AFTER = timedelta(hours=2)  # 90 % of a PaCO2 change at an alveolar ventilation of 2.5 L/min takes 89 min
 NEARBY = timedelta(hours=1)  # a cardiac output, VO2, VCO2 or SvO2 this old still belongs to the gas
@@ -79,12 +80,10 @@ def fit(case: Case, *, seed: int = 1, draws: int = DRAWS, read_as: str = "seen")
     NothingToSay
         If no gas of the case can be used.
     """
-    last = None
-    for last in fits_along(case, seed=seed, draws=draws, read_as=read_as):
-        pass
-    if last is None:
+    fits = deque(fits_along(case, seed=seed, draws=draws, read_as=read_as), maxlen=1)
+    if not fits:
         raise NothingToSay(_why_nothing(case))
-    return last
+    return fits[0]
 
 
 def _why_nothing(case: Case) -> str:

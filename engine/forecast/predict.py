@@ -32,6 +32,9 @@ from engine.record import Entry
 Array = NDArray[np.float64]
 
 
+FORECASTS_PER_DRAW = 2  # each draw of the fit drifts and scatters twice
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Prediction:
     """What the mechanism gives, each array (draws,): the state of the body, the sample, and what went in."""
@@ -74,7 +77,8 @@ def predict(
     seed : int
     """
     rng = np.random.default_rng([seed, 0x0F0E])
-    n, shape = len(fit.belief), (len(fit.belief), len(PARAMETERS))
+    start = fit.belief.take(np.tile(np.arange(len(fit.belief)), FORECASTS_PER_DRAW))
+    n, shape = len(start), (len(start), len(PARAMETERS))
     tail, steps, scatter = (
         heavy_tail(rng, n),
         rng.standard_normal(shape),
@@ -83,9 +87,9 @@ def predict(
     since = (*fit.case.entries[fit.gas_number + 1 :], tried)
     in_force = last_settings(fit.case)
     drift = drift_between(
-        fit.belief, since, settings_at(fit.case, fit.gas_number), hours, tail, read_as=fit.read_as
+        start, since, settings_at(fit.case, fit.gas_number), hours, tail, read_as=fit.read_as
     )
-    belief = Belief(fit.belief.values + drift.shift + drift.sd * steps, fit.belief.active, fit.belief.own)
+    belief = Belief(start.values + drift.shift + drift.sd * steps, start.active, start.own)
     was = breathing_at(fit.case, in_force)
     now = breathing_at(fit.case, in_force.then(tried.settings))
 

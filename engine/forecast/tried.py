@@ -55,7 +55,7 @@ def forecast(
     Impossible
         If a field is unknown or a value cannot be.
     """
-    at = at or fit.case.entries[-1].time
+    at = at or max(fit.case.entries[-1].time, fit.gas_time)
     if at < fit.gas_time:
         raise Impossible("at", at.isoformat(), f"a time not before the last gas, {fit.gas_time.isoformat()}")
     if minutes is not None and not 0.0 <= minutes <= 24 * 60:
