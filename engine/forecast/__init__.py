@@ -1,4 +1,4 @@
-"""Fit + change -> Forecast: the next gas, the settled state, when to look, what it touches, what is not known."""
+"""Fit + change -> Forecast: the next gas, the settled state, when to look, what is touched and not known."""
 
 from engine.forecast.predict import Prediction, predict
 from engine.forecast.result import LEVELS, QUANTITIES, Draws, Forecast, Recheck

@@ -4,32 +4,25 @@ from datetime import datetime, timedelta
 
 import numpy as np
 
+from engine.checks.moment import SETTING_WORDS
 from engine.fit import Fit
 from engine.forecast.predict import Prediction
+from engine.forecast.underway import underway_at
 from engine.lung.prior import logistic
 from engine.physics.acid_base import ph_at_standard_base_excess
+from engine.physics.oxygen import so2_in_blood
 from engine.record import Settings
 
 STALE_AFTER = timedelta(hours=8)
-LEAST_VOLUME_OVER_SERIES = 1.5  # below it streaming flow carries gas and no forecast of PaCO2 is made (briscoe1954)
 MUCH_SHUNT = 0.30
 MUCH_COHB = 0.10
+LARGE_FIO2_STEP = 0.2 - 1e-9  # of FiO2; common practice, no source. As typed: 0.6 - 0.4 is not quite 0.2
 SEVERE_BASE_DEFICIT = -10.0
+ALKALAEMIA = 7.45
+UNSETTLED_MINUTES = 60.0  # threestores: nine tenths of a change of PaCO2 within about an hour
+WORTH_A_WORD_MMHG = 2.0
 FEW_ANCESTORS = 40
 RESETTING = ("prone", "drain", "recruitment", "reintubation")
-
-NO_SUPPORT = (
-    "Not forecast: the patient is under extracorporeal support, and the gas no longer tells what the lung does."
-)
-NO_PEEP = (
-    "PaO2 and SaO2 are not forecast: how a lung answers a change of PEEP cannot be read off its gases "
-    "(P/F changed by -16 to 47 mmHg in half of 983 trials of protocol steps)."
-)
-
-
-def too_small_a_breath(p: Prediction) -> bool:
-    """Whether the tidal volume is under 1.5 times the series dead space in most draws."""
-    return bool(p.breathing.tidal_volume_ml < LEAST_VOLUME_OVER_SERIES * np.median(p.series_ml))
 
 
 def cautions_of(
@@ -43,7 +36,6 @@ def cautions_of(
 ) -> tuple[str, ...]:
     """All that apply, the gravest first."""
     said = [
-        *_not_forecast(p, changed),
         *_harmful_readings(fit, p, changed),
         *_breathing(fit, p, settings, changed, effort_stops),
         *_devices(changed),
@@ -57,65 +49,74 @@ def cautions_of(
     )
 
 
-def _not_forecast(p: Prediction, changed: dict[str, tuple[object, object]]) -> list[str]:
-    said = []
-    if "peep_cmh2o" in changed:
-        said.append(NO_PEEP)
-    if too_small_a_breath(p):
-        said.append(
-            f"PaCO2 and pH are not forecast: a tidal volume of {p.breathing.tidal_volume_ml:.0f} mL is less than "
-            f"1.5 times the series dead space (about {np.median(p.series_ml):.0f} mL)."
-        )
-    return said
-
-
 def _harmful_readings(fit: Fit, p: Prediction, changed: dict[str, tuple[object, object]]) -> list[str]:
-    said = []
-    excess = float(np.median(p.belief.of("standard_base_excess")))
-    conditions = fit.case.patient.conditions
-    if excess < SEVERE_BASE_DEFICIT:
-        said.append(
-            f"Metabolic acidosis (standard base excess {excess:.0f} mmol/L): {_ph_at(30, excess)}, {_ph_at(40, excess)}. "
-            "The hyperventilation is what holds the pH; less alveolar ventilation means less pH."
-        )
-    if "chronic_hypercapnia" in conditions:
-        said.append(
-            f"Chronic hypercapnia: {_ph_at(50, excess)}, {_ph_at(40, excess)}. "
-            "A normal PaCO2 may be alkalaemia for this patient; pH leads."
-        )
+    said = [*_acid_base(fit, p)]
     gas = fit.case.entries[fit.gas_number].gas
     shunt = float(np.median(logistic(p.belief.of("logit_shunt"))))
-    lowered = _lowered(changed.get("fio2"))
+    cohb = gas.cohb if gas is not None and gas.cohb is not None and gas.cohb >= MUCH_COHB else None
     if shunt > MUCH_SHUNT:
         said.append(
-            f"About {100 * shunt:.0f} % of the blood passes lung without air: FiO2 moves PaO2 little, though saturation more. "
-            "The rest is for the team (PEEP, recruitment, position, secretions) and is not forecast. "
-            "Lowering FiO2 still desaturates."
+            f"About {100 * shunt:.0f} % of the blood passes lung without air: FiO2 moves PaO2 little, though "
+            "saturation more. The rest is for the team (PEEP, recruitment, position, secretions) and is not "
+            "forecast. Lowering FiO2 still desaturates."
         )
-    if gas is not None and gas.cohb is not None and gas.cohb >= MUCH_COHB:
+    if gas is not None and cohb is not None:
+        sao2 = float(so2_in_blood(gas.pao2_mmhg, gas.ph, gas.paco2_mmhg)) if gas.sao2 is None else gas.sao2
         said.append(
-            f"Carboxyhaemoglobin {100 * gas.cohb:.0f} %: SpO2 reads it as oxygenated, and SaO2 here leaves it out; "
-            f"about {100 * (gas.sao2 or 1.0) * (1 - gas.cohb - (gas.methb or 0.0)):.0f} % of all haemoglobin carries oxygen. "
-            "A high FiO2 is also its treatment."
+            f"Carboxyhaemoglobin {100 * cohb:.0f} %: SpO2 reads it as oxygenated, and SaO2 here leaves it "
+            f"out; about {100 * sao2 * (1 - cohb - (gas.methb or 0.0)):.0f} % of all haemoglobin carries "
+            "oxygen. A high FiO2 is also its treatment, and no SpO2 shows what a lower one does."
         )
-    if lowered:
+    step = _lowered_by(changed.get("fio2"))
+    if step > 0 and cohb is None:
         said.append("With a lower FiO2 watch SpO2 until the gas: above 96 % it says little about PaO2.")
+    if step >= LARGE_FIO2_STEP:
+        said.append(
+            "A large step down: P/F does not stay as it is, and near the knee of the curve saturation falls "
+            "fast. Smaller steps, each with a look after about 10 min, show where the knee lies."
+        )
     if changed.get("fio2", (None, None))[1] == 1.0:
         said.append(
-            "At FiO2 1.0 badly ventilated lung may collapse (absorption): shunt may grow, and that is not known."
+            "At FiO2 1.0 badly ventilated lung may collapse (absorption): shunt may grow, and how much is "
+            "not known."
         )
     return said
 
 
-def _lowered(change: tuple[object, object] | None) -> bool:
-    if change is None:
-        return False
-    before, after = change
-    return isinstance(before, float | int) and isinstance(after, float | int) and after < before
+def _acid_base(fit: Fit, p: Prediction) -> list[str]:
+    """What a normal PaCO2 would mean in metabolic acidosis and in chronic hypercapnia."""
+    said, excess = [], float(np.median(p.belief.of("standard_base_excess")))
+    now = float(np.nanmedian(p.before.paco2_mmhg))
+    if excess < SEVERE_BASE_DEFICIT:
+        higher = [_ph_at(paco2, excess) for paco2 in (30.0, 40.0) if paco2 > now + WORTH_A_WORD_MMHG]
+        holds = f": {', '.join(higher)}. The ventilation is what holds the pH" if higher else ""
+        said.append(
+            f"Metabolic acidosis (standard base excess {excess:.0f} mmol/L){holds}; "
+            "less alveolar ventilation means less pH."
+        )
+    if "chronic_hypercapnia" in fit.case.patient.conditions:
+        lower = [paco2 for paco2 in (50.0, 40.0) if paco2 < now - WORTH_A_WORD_MMHG]
+        if lower and float(ph_at_standard_base_excess(lower[-1], excess)) > ALKALAEMIA:
+            said.append(
+                f"Chronic hypercapnia: {', '.join(_ph_at(paco2, excess) for paco2 in lower)}. "
+                "A normal PaCO2 may be alkalaemia for this patient; pH leads."
+            )
+        else:
+            said.append("Chronic hypercapnia: the usual PaCO2 of this patient is not a normal one; pH leads.")
+    return said
+
+
+def _lowered_by(change: tuple[object, object] | None) -> float:
+    """How far a setting is lowered; 0 where it is not."""
+    before, after = change or (None, None)
+    if not isinstance(before, float | int) or not isinstance(after, float | int):
+        return 0.0
+    return max(before - after, 0.0)
 
 
 def _ph_at(paco2_mmhg: float, excess: float) -> str:
-    return f"a PaCO2 of {paco2_mmhg:.0f} mmHg would mean a pH of about {float(ph_at_standard_base_excess(paco2_mmhg, excess)):.2f}"
+    ph = float(ph_at_standard_base_excess(paco2_mmhg, excess))
+    return f"a PaCO2 of {paco2_mmhg:.0f} mmHg would mean a pH of about {ph:.2f}"
 
 
 def _breathing(
@@ -128,21 +129,23 @@ def _breathing(
     said, own = [], p.breathing.own_rate
     if effort_stops:
         said.append(
-            "If breathing effort stops (paralysis, sedation) the set rate and volume alone ventilate: this is that forecast."
+            "If breathing effort stops (paralysis, sedation) the set rate and volume alone ventilate: this "
+            "is that forecast."
         )
     elif own.triggering and own.per_min is not None:
         said.append(
-            f"The patient breathes at {own.per_min:.0f}/min of their own: a set rate below that changes next to nothing, "
-            "a higher one at most part; if effort stops the set rate alone remains."
+            f"The patient breathes at {own.per_min:.0f}/min of their own: a set rate below that changes next "
+            "to nothing, a higher one at most part; if effort stops the set rate alone remains."
         )
     if settings.mode in ("support", "other"):
         said.append(
-            "In this mode the patient makes the volume: the forecast holds only for the total rate and tidal volume shown."
+            "In this mode the patient makes the volume: the forecast holds only for the total rate and tidal "
+            "volume shown."
         )
     elif settings.mode == "pressure" and not p.breathing.tidal_volume_charted:
         said.append(
-            f"In pressure mode the volume follows the lung: {p.breathing.tidal_volume_ml:.0f} mL is expected from the pressure at an "
-            "unchanged compliance."
+            f"In pressure mode the volume follows the lung: {p.breathing.tidal_volume_ml:.0f} mL is expected "
+            "from the pressure at an unchanged compliance."
         )
     if {"inspiratory_time_s", "ie_ratio", "pause_s", "flow_l_per_min", "mode"} & changed.keys():
         said.append("Pause, inspiratory time and flow alone shift PaCO2 by about 10 %; that is not forecast.")
@@ -152,19 +155,31 @@ def _breathing(
 def _devices(changed: dict[str, tuple[object, object]]) -> list[str]:
     if not {"humidifier", "apparatus_dead_space_ml"} & changed.keys():
         return []
-    return ["Swapping a device means a disconnection: lung volume may be lost, and PaO2 may fall for a while."]
+    return [
+        "Swapping a device means a disconnection: lung volume may be lost, and PaO2 may fall for a while."
+    ]
 
 
 def _age(fit: Fit, at: datetime) -> list[str]:
     said, age = [], at - fit.gas_time
     if age > STALE_AFTER:
         said.append(
-            f"The last gas is {age / timedelta(hours=1):.0f} h old: the lung may have moved more than the interval says."
+            f"The last gas is {age / timedelta(hours=1):.0f} h old: the lung may have moved more than the "
+            "interval says."
         )
-    since = [e for entry in fit.case.entries[fit.gas_number :] for e in entry.events if e in RESETTING]
+    since = [
+        e for entry in fit.case.entries if entry.time > fit.gas_time for e in entry.events if e in RESETTING
+    ]
     if since:
         said.append(
             f"Since the last gas: {', '.join(dict.fromkeys(since))}. No forecast is firm before a new gas."
+        )
+    early = underway_at(fit.case, fit.gas_time)
+    if early is not None and early.minutes < UNSETTLED_MINUTES:
+        names = ", ".join(SETTING_WORDS[name] for name in early.changed)
+        said.append(
+            f"The last gas was drawn {early.minutes:.0f} min after a change ({names}): it had not settled, "
+            "and what it read is not where that change ends."
         )
     return said
 
@@ -177,5 +192,8 @@ def _identification(fit: Fit) -> list[str]:
     if fit.case.site.barometric_mmhg is None and fit.case.site.altitude_m is None:
         said.append("Barometric pressure is not given: 760 mmHg is assumed.")
     if fit.distinct < FEW_ANCESTORS:
-        said.append("The last gas was a surprise to the model: few of its explanations fit. Read the intervals as too narrow.")
+        said.append(
+            "The last gas was a surprise to the model: few of its explanations fit. Read the intervals as "
+            "too narrow."
+        )
     return said

@@ -1,10 +1,10 @@
 """The mechanism of a forecast: drift the belief to the moment, breathe as asked, scatter the sample.
 
-The random numbers depend on the seed alone, not on the change tried: two trials of one patient differ by what was
-changed and by nothing else.
+The random numbers depend on the seed alone, not on the change tried: two trials of one patient differ by what
+was changed and by nothing else.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from engine.fit import Fit
 from engine.fit.observation import PACO2_CV, PAO2_CV, PH_SD, SAO2_SD, TAIL
 from engine.fit.sequence import STANDARD_WEIGHT_KG, settings_at
+from engine.forecast.underway import Underway, underway_at
 from engine.lung import (
     Belief,
     Breathing,
@@ -37,10 +38,14 @@ FORECASTS_PER_DRAW = 2  # each draw of the fit drifts and scatters twice
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Prediction:
-    """What the mechanism gives, each array (draws,): the state of the body, the sample, and what went in."""
+    """What the mechanism gives, each array (draws,): the state of the body, the sample, and what went in.
+
+    ``before`` is the state when the change is made, which is on its way where ``underway`` is given.
+    """
 
     belief: Belief
     breathing: Breathing
+    underway: Underway | None
     before: Gas
     settled: Gas
     state: Gas
@@ -66,8 +71,8 @@ def predict(
     fit : Fit
         Its case may hold entries after the last gas; they are read as ``fit.read_as``.
     tried : Entry
-        Time and settings of the change; its ``change_reason`` says whether it is evidence (``patient``) when read as
-        ``seen``. A change that is only tried carries ``prompted``.
+        Time and settings of the change; its ``change_reason`` says whether it is evidence (``patient``) when
+        read as ``seen``. A change that is only tried carries ``prompted``.
     hours : float
         From the last gas to the moment forecast; the lung drifts over it.
     minutes : float or None
@@ -104,24 +109,36 @@ def predict(
             stopping=stopping,
         )
 
-    before, after = give(was), give(now, was if effort_stops else None)
-    given = ventilation(belief, now, effort_stops=effort_stops)
-    settled = settled_gas(after)
-    state = settled
-    if minutes is not None:
-        state = gas_on_the_way(
+    def on_the_way(leaving: Exchange, towards: Exchange, passed: float, flow_l_per_min: Array) -> Gas:
+        return gas_on_the_way(
             belief,
-            before,
-            after,
-            minutes,
-            alveolar_l_per_min=given.alveolar_l_per_min,
+            leaving,
+            towards,
+            passed,
+            alveolar_l_per_min=flow_l_per_min,
             weight_kg=fit.case.patient.weight_kg or STANDARD_WEIGHT_KG,
             obstructive="obstructive" in fit.case.patient.conditions,
         )
+
+    rest, after = give(was), give(now, was if effort_stops else None)
+    given = ventilation(belief, now, effort_stops=effort_stops)
+    before, settled = settled_gas(rest), settled_gas(after)
+    state, underway = settled, underway_at(fit.case, tried.time)
+    if underway is not None:
+        earlier, flow = give(breathing_at(fit.case, underway.before)), ventilation(belief, was)
+        before = on_the_way(earlier, rest, underway.minutes, flow.alveolar_l_per_min)
+        state = on_the_way(earlier, rest, underway.minutes + (minutes or 0.0), flow.alveolar_l_per_min)
+    if minutes is None:
+        state = settled
+    elif underway is None or now != was or effort_stops:
+        # From where the body stands. Its stores are taken as level: exact where it had settled.
+        leaving = replace(rest, paco2_mmhg=before.paco2_mmhg, pao2_mmhg=before.pao2_mmhg)
+        state = on_the_way(leaving, after, minutes, given.alveolar_l_per_min)
     return Prediction(
         belief,
         now,
-        settled_gas(before),
+        underway,
+        before,
         settled,
         state,
         _sample(state, scatter),

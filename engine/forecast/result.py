@@ -53,7 +53,7 @@ class Draws:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Recheck:
-    """When a gas is worth drawing, in minutes after the change: an early look, and the settled gas, with the reason."""
+    """When a gas is worth drawing, in minutes after the change: an early look, the settled gas, and why."""
 
     early_minutes: float | None
     settled_minutes: float | None
@@ -87,8 +87,8 @@ class Forecast:
     def region(self, share: float) -> tuple[Array, Array] | None:
         """A closed outline in the PaO2-PaCO2 plane that holds this share of the draws of the next gas.
 
-        An ellipse in the logarithms of both, about their medians, grown until it holds the share; ``None`` where
-        either is not forecast.
+        An ellipse in the logarithms of both, about their medians, grown until it holds the share; ``None``
+        where either is not forecast.
 
         Returns
         -------

@@ -10,13 +10,14 @@ from numpy.typing import NDArray
 
 from engine import __version__
 from engine.fit import Fit
-from engine.forecast.cautions import NO_SUPPORT, cautions_of, too_small_a_breath
-from engine.forecast.predict import Prediction, predict
+from engine.forecast.cautions import cautions_of
+from engine.forecast.predict import predict
 from engine.forecast.recheck import recheck_of
+from engine.forecast.refusals import refusals
 from engine.forecast.result import QUANTITIES, Draws, Forecast, Recheck
 from engine.limits import limits_for, mechanics_of
 from engine.lung import Gas
-from engine.lung.breathing import last_settings
+from engine.lung.breathing import EXCHANGER_ML, last_settings
 from engine.record import Entry, Impossible, Settings, Target
 
 Array = NDArray[np.float64]
@@ -63,15 +64,15 @@ def forecast(
     before = last_settings(fit.case)
     asked = _asked(change, before)
     settings = before.then(asked)
-    changed = {
-        n: (getattr(before, n), v) for n, v in settings.given().items() if getattr(before, n) != v
-    }
+    changed = {n: (getattr(before, n), v) for n, v in settings.given().items() if getattr(before, n) != v}
     hours = (at - fit.gas_time) / timedelta(hours=1) + (SETTLED_HOURS if minutes is None else minutes / 60.0)
     tried = Entry(time=max(at, fit.case.entries[-1].time), settings=asked, change_reason="prompted")
     p = predict(fit, tried, hours=hours, minutes=minutes, effort_stops=effort_stops, seed=seed)
-    supported = fit.case.extracorporeal_now()
-    refused = _refused(p, changed, supported)
-    next_gas, settled = _draws(p.sample, refused), _draws(p.settled, refused)
+    refused = refusals(fit, p, changed)
+    missing = frozenset(q for refusal in refused for q in refusal.quantities)
+    reasons = tuple(refusal.reason for refusal in refused)
+    nothing = len(missing) == len(QUANTITIES)
+    next_gas, settled = _draws(p.sample, missing), _draws(p.settled, missing)
     return Forecast(
         version=__version__,
         seed=seed,
@@ -97,38 +98,33 @@ def forecast(
             effective_tidal_volume_ml=p.breathing.tidal_volume_ml,
             seed=seed,
         ),
-        recheck=Recheck(early_minutes=None, settled_minutes=None, reason=NO_SUPPORT)
-        if supported
-        else recheck_of(fit, p, tuple(changed)),
-        cautions=(NO_SUPPORT,)
-        if supported
-        else cautions_of(fit, p, settings, changed, at, effort_stops=effort_stops),
+        recheck=Recheck(early_minutes=None, settled_minutes=None, reason=reasons[0])
+        if nothing
+        else recheck_of(fit, p, tuple(changed), effort_stops=effort_stops),
+        cautions=reasons
+        if nothing
+        else (*reasons, *cautions_of(fit, p, settings, changed, at, effort_stops=effort_stops)),
     )
 
 
 def _asked(change: Mapping[str, Any], before: Settings) -> Settings:
-    """The change as settings; a humidifier swap takes the exchanger's volume with it unless a volume is given."""
+    """The change as settings; a swap of humidifiers moves the exchanger's volume unless a volume is given."""
     known = {f.name for f in fields(Settings)}
     for name in change:
         if name not in known:
             raise Impossible(name, change[name], f"one of the settings {', '.join(sorted(known))}")
-    asked = Settings(**change)
-    swapped = before.humidifier == "exchanger" and asked.humidifier == "heated"
-    if swapped and asked.apparatus_dead_space_ml is None and before.apparatus_dead_space_ml is not None:
+    asked, device_ml = Settings(**change), before.apparatus_dead_space_ml
+    after = before.then(asked)
+    if after.rate_per_min == 0 and after.mode != "support":
+        raise Impossible("rate_per_min", after.rate_per_min, "more than 0 outside support mode")
+    if asked.humidifier is None or asked.apparatus_dead_space_ml is not None or device_ml is None:
+        return asked
+    swap = (before.humidifier, asked.humidifier)
+    if swap == ("exchanger", "heated"):
         return replace(asked, apparatus_dead_space_ml=0.0)
+    if swap == ("heated", "exchanger"):
+        return replace(asked, apparatus_dead_space_ml=device_ml + EXCHANGER_ML)
     return asked
-
-
-def _refused(p: Prediction, changed: Mapping[str, Any], supported: bool) -> frozenset[str]:
-    """Quantities that are not forecast."""
-    if supported:
-        return frozenset(QUANTITIES)
-    refused = set()
-    if "peep_cmh2o" in changed:
-        refused |= {"pao2_mmhg", "sao2"}
-    if too_small_a_breath(p):
-        refused |= {"paco2_mmhg", "ph"}
-    return frozenset(refused)
 
 
 def _draws(gas: Gas, refused: frozenset[str]) -> dict[str, Draws | None]:
@@ -157,9 +153,9 @@ def _in_target(settled: dict[str, Draws | None], target: Target | None) -> dict[
         inside[q] = None if draws is None else _between(draws.values, low, high)
     known = [i for i in inside.values() if i is not None]
     whole = float(np.all(known, axis=0).mean()) if known and len(known) == len(inside) else None
-    return {q.removesuffix("_mmhg"): _share(inside.get(q)) for q in ("paco2_mmhg", "ph", "pao2_mmhg", "sao2")} | {
-        "all": whole
-    }
+    return {
+        q.removesuffix("_mmhg"): _share(inside.get(q)) for q in ("paco2_mmhg", "ph", "pao2_mmhg", "sao2")
+    } | {"all": whole}
 
 
 def _between(values: Array, low: float | None, high: float | None) -> NDArray[np.bool_]:

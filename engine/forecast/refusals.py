@@ -1,0 +1,60 @@
+"""What is not forecast, and why: the quantities and a plain sentence each."""
+
+from collections.abc import Mapping
+from typing import Any, NamedTuple
+
+import numpy as np
+
+from engine.fit import Fit
+from engine.forecast.predict import Prediction
+from engine.forecast.result import QUANTITIES
+
+LEAST_VOLUME_OVER_SERIES = 1.5  # below it streaming flow carries gas and no forecast is made (briscoe1954)
+LEAST_SOLVED = 0.95  # of the draws: with fewer, those that are left are the lucky ones
+
+NO_SUPPORT = (
+    "Not forecast: the patient is under extracorporeal support, and the gas no longer tells what the lung "
+    "does."
+)
+SUPPORT_SINCE = (
+    "Not forecast: extracorporeal support has run since the last gas. A gas drawn after it has stopped is "
+    "needed."
+)
+NO_STEADY_STATE = (
+    "Not forecast: in too many of the lungs that fit this patient, oxygen uptake or CO2 output cannot be "
+    "kept up under these settings, and no steady state is reached."
+)
+NO_PEEP = (
+    "PaO2 and SaO2 are not forecast: how a lung answers a change of PEEP cannot be read off its gases "
+    "(P/F changed by -16 to 47 mmHg in half of 983 trials of protocol steps)."
+)
+
+
+class Refusal(NamedTuple):
+    """Quantities that are not forecast, and the reason in words."""
+
+    quantities: frozenset[str]
+    reason: str
+
+
+_ALL = frozenset(QUANTITIES)
+
+
+def refusals(fit: Fit, p: Prediction, changed: Mapping[str, Any]) -> tuple[Refusal, ...]:
+    """All that apply; one that refuses everything stands alone."""
+    if fit.case.extracorporeal_now():
+        return (Refusal(_ALL, NO_SUPPORT),)
+    if any("extracorporeal_start" in e.events for e in fit.case.entries[fit.gas_number + 1 :]):
+        return (Refusal(_ALL, SUPPORT_SINCE),)
+    if p.breathing.tidal_volume_ml < LEAST_VOLUME_OVER_SERIES * np.median(p.series_ml):
+        return (Refusal(_ALL, _too_small_a_breath(p)),)
+    if np.isfinite(p.settled.pao2_mmhg).mean() < LEAST_SOLVED:
+        return (Refusal(_ALL, NO_STEADY_STATE),)
+    return (Refusal(frozenset({"pao2_mmhg", "sao2"}), NO_PEEP),) if "peep_cmh2o" in changed else ()
+
+
+def _too_small_a_breath(p: Prediction) -> str:
+    return (
+        f"Not forecast: a tidal volume of {p.breathing.tidal_volume_ml:.0f} mL is less than 1.5 times the "
+        f"series dead space (about {np.median(p.series_ml):.0f} mL), and what it clears is not known."
+    )
