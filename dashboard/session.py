@@ -78,7 +78,7 @@ def bed() -> Bed:
 
 
 def is_unread() -> bool:
-    """Whether the patient in hand has just come to hand, and the lung behind the gases is still to be read."""
+    """Whether this patient has just come to hand, and the lung behind the gases is still to be read."""
     return bed().read != bed().chosen
 
 

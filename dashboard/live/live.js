@@ -45,27 +45,40 @@ function wholePicture(node) {
   paint(node);
 }
 
-function paint(node) {
-  const Plotly = window.Plotly;
-  const { figure, palettes, height } = node.forebreath.given;
-  const palette = palettes[getComputedStyle(node).colorScheme.includes("dark") ? "dark" : "light"];
-  const { data, layout } = coloured(figure, palette);
-  for (const [axis, range] of Object.entries(node.forebreath.zoom)) layout[axis].range = [...range];
-  const whole = {
-    name: "whole",
-    title: "Show the whole picture",
-    icon: Plotly.Icons.home,
-    click: () => wholePicture(node),
-  };
-  const buttons = [["zoom2d", "pan2d"], [whole], ["toImage"]];
-  return Plotly.react(node, data, { ...layout, height, autosize: true }, {
+// One settings object per node, for its whole life: Plotly.react takes a new one for a new plot and starts over.
+function settings(node) {
+  return (node.forebreathSettings ??= {
     displaylogo: false,
     showSendToCloud: false,
     responsive: true,
     doubleClick: false,
-    modeBarButtons: buttons,
+    modeBarButtons: [
+      ["zoom2d", "pan2d"],
+      [
+        {
+          name: "whole",
+          title: "Show the whole picture",
+          icon: window.Plotly.Icons.home,
+          click: () => wholePicture(node),
+        },
+      ],
+      ["toImage"],
+    ],
     toImageButtonOptions: { format: "png", scale: 2, filename: "forebreath" },
   });
+}
+
+// One painting at a time; each takes what is given last.
+function paint(node) {
+  const react = () => {
+    const { figure, palettes, height } = node.forebreath.given;
+    const palette = palettes[getComputedStyle(node).colorScheme.includes("dark") ? "dark" : "light"];
+    const { data, layout } = coloured(figure, palette);
+    for (const [axis, range] of Object.entries(node.forebreath.zoom)) layout[axis].range = [...range];
+    return window.Plotly.react(node, data, { ...layout, height, autosize: true }, settings(node));
+  };
+  node.forebreathPainting = (node.forebreathPainting ?? Promise.resolve()).then(react, react);
+  return node.forebreathPainting;
 }
 
 export default function ({ data, parentElement }) {

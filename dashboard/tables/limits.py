@@ -13,7 +13,7 @@ _NUMBERS = re.compile(r"\d+(?:\.\d+)?")
 
 @dataclass(frozen=True, slots=True)
 class Margin:
-    """How far a value is from the nearer ``end`` of its limit, in its own unit and as a share; negative once past."""
+    """How far a value is from the nearer ``end`` of its limit, also as a share; negative once past it."""
 
     left: float
     share: float
@@ -24,9 +24,9 @@ class Margin:
 def margin_of(limit: Limit) -> Margin | None:
     """The margin of one row; ``None`` where the value, the limit or the verdict is not known.
 
-    A limit such as "4 to 8 mL/kg" has two ends and the nearer one counts. Which side of a single limit is the
-    good one, the row's own verdict says: ``ok`` true means that the distance is room, false that it is excess.
-    The share is of the limit itself; for pH, of its hydrogen ions.
+    A limit such as "4 to 8 mL/kg" has two ends and the nearer one counts. Which side of a limit is good, the
+    row's own verdict says: ``ok`` true means that the distance is room, false that it is excess. The share is
+    of the limit itself; for pH, of its hydrogen ions.
     """
     value, ends = limit.value, _ends(limit)
     if value is None or limit.ok is None or not ends:

@@ -31,7 +31,7 @@ def rows(html: str) -> list[list[str]]:
     ]
 
 
-# ------------------------------------------------------------------------------------------------- now and expected
+# ------------------------------------------------------------------------------------------- now and expected
 
 
 def test_now_above_expected_with_both_intervals(case, forecast_of, now):
@@ -64,7 +64,7 @@ def test_values_used_stand_beside_the_result(forecast_of, now):
     assert "nothing; all as charted" in words(tried_line(forecast_of(), False, now))
 
 
-# ------------------------------------------------------------------------------------------------------------ limits
+# ----------------------------------------------------------------------------------------------------- limits
 
 
 @pytest.mark.parametrize(
@@ -123,8 +123,9 @@ def test_every_limit_shows_number_limit_margin_and_source(make_limit):
         limits_table([make_limit("fio2", 0.5, 0.6, True, level="soft", probability=0.25)], Units())
     )
     assert dict(zip(head, row, strict=True)) == {
-        "": "inside", "Limit on": "FiO₂", "Value": "50 %", "Limit": "60 % (soft)", "Margin": "10 % left to 60 %",
-        "Chance inside": "25 %", "What it says": "fio2 says", "Source": "source2031",
+        "": "inside", "Limit on": "FiO₂", "Value": "50 %", "Limit": "60 % (soft)",
+        "Margin": "10 % left to 60 %", "Chance inside": "25 %",
+        "What it says": "fio2 says", "Source": "source2031",
     }  # fmt: skip
 
 
@@ -136,7 +137,7 @@ def test_the_glance_leaves_out_the_nearest_and_the_unknown(make_limit):
     assert limits_at_a_glance(limits[:1], Units()) == ""
 
 
-# -------------------------------------------------------------------------------------------------------------- gases
+# ------------------------------------------------------------------------------------------------------ gases
 
 
 def test_gases_so_far_with_textbook_numbers_and_the_settings_then(case, now):
@@ -161,7 +162,7 @@ def test_house_units_in_the_gas_table(case, now):
     assert line["PaCO₂ kPa"] == "8.3" and line["Hb g/L"] == "98"
 
 
-# ------------------------------------------------------------------------------------------------ who, when, cautions
+# ---------------------------------------------------------------------------------------- who, when, cautions
 
 
 def test_whose_data_and_how_old(case, now):
@@ -214,7 +215,7 @@ def test_only_doubtful_checks_are_shown():
     assert checks_list([check("good", True)]) == ""
 
 
-# ------------------------------------------------------------------------------------------------------------- escaping
+# --------------------------------------------------------------------------------------------------- escaping
 
 
 def test_nothing_typed_into_a_case_reaches_the_page_as_markup(case, forecast_of, make_limit, now):
