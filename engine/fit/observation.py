@@ -19,8 +19,8 @@ from engine.record import BloodGas
 
 Array = NDArray[np.float64]
 
-PACO2_CV = 0.030  # thorson1983
-PAO2_CV = 0.050  # thorson1983
+PACO2_CV = 0.028  # hess1992
+PAO2_CV = 0.036  # hess1992; thorson1983: 0.051
 PH_SD = 0.012  # thorson1983: range 0.03 of six samples, less the part that PaCO2 explains
 SAO2_SD = 0.015  # least significant change 1.3 % of back-to-back samples, plus misfit of a standard curve
 TAIL = 5.0  # degrees of freedom of every scatter

@@ -29,7 +29,9 @@ Rows = NDArray[np.int64]
 
 DRAWS = 1000
 FIT_UNITS = 11  # V/Q nodes while fitting: within 0.02 % of PaO2 in the median lung, far below scatter
-SETTLED_AFTER = timedelta(hours=2)  # 90 % of a PaCO2 change at an alveolar ventilation of 2.5 L/min takes 89 min
+SETTLED_AFTER = timedelta(
+    hours=2
+)  # 90 % of a PaCO2 change at an alveolar ventilation of 2.5 L/min takes 89 min
 NEARBY = timedelta(hours=1)  # a cardiac output, VO2, VCO2 or SvO2 this old still belongs to the gas
 STANDARD_WEIGHT_KG = 70.0
 
@@ -90,7 +92,9 @@ def _why_nothing(case: Case) -> str:
     gases = [e.gas for e in case.entries if e.gas is not None]
     if not gases:
         return "there is no blood gas in this case yet"
-    return "no gas of this case can be used: each is venous, capillary, excluded or under extracorporeal support"
+    return (
+        "no gas of this case can be used: each is venous, capillary, excluded or under extracorporeal support"
+    )
 
 
 def barometric_mmhg(site: Site) -> float:
@@ -123,7 +127,11 @@ def _after_gas(
 ) -> Fit:
     gas, time = case.entries[number].gas, case.entries[number].gas_time
     assert gas is not None  # a usable gas
-    observed, hb, pressure = _observed(case, number, time), carrying_hb_g_per_dl(gas), barometric_mmhg(case.site)
+    observed, hb, pressure = (
+        _observed(case, number, time),
+        carrying_hb_g_per_dl(gas),
+        barometric_mmhg(case.site),
+    )
     situation = _situation(case, number, time)
     if last is None:
         reference = situation.breathing

@@ -47,7 +47,9 @@ def _own_rate(belief: Belief, breathing: Breathing) -> Array:
     own, spread = breathing.own_rate, np.exp(OWN_RATE_SPREAD * 2.0 * (belief.own - 0.5))
     if own.per_min is not None:
         return own.per_min * spread
-    return np.where(belief.active, own.at_most_per_min * (OWN_RATE_LEAST + (1.0 - OWN_RATE_LEAST) * belief.own), 0.0)
+    return np.where(
+        belief.active, own.at_most_per_min * (OWN_RATE_LEAST + (1.0 - OWN_RATE_LEAST) * belief.own), 0.0
+    )
 
 
 def arterial_gas(

@@ -10,7 +10,9 @@ from datetime import datetime, timedelta
 
 from engine.record import Case, Entry, Measured, Settings
 
-LATEST_WITHIN = timedelta(hours=4)  # how long a measured value speaks for the present; then the last one is kept
+LATEST_WITHIN = timedelta(
+    hours=4
+)  # how long a measured value speaks for the present; then the last one is kept
 TRIGGERS_ABOVE_SET_PER_MIN = 1.0  # total above set by more than counting error: the patient triggers
 SUPPORTED_MODES = ("support", "other")
 
@@ -75,7 +77,9 @@ def last_settings(case: Case) -> Settings:
     return in_force
 
 
-EXCHANGER_ML = 55.0  # nominal, where the volume is not charted: middle of trials' devices (campbell2000, prat2003)
+EXCHANGER_ML = (
+    55.0  # nominal, where the volume is not charted: middle of trials' devices (campbell2000, prat2003)
+)
 
 
 def apparatus_dead_space_ml(settings: Settings) -> float:

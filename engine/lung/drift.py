@@ -24,12 +24,12 @@ TAIL = 5.0  # degrees of freedom of the heavy tail
 
 # (jump per gas, rate per square-root hour) of a passive and of an active patient.
 PASSIVE = {
-    "logit_shunt": (0.06, 0.06),
+    "logit_shunt": (0.03, 0.03),
     "ln_vq_log_sd": (0.02, 0.02),
     "logit_dead_space": (0.03, 0.03),
     "ln_series_ml": (0.0, 0.005),
     "apparatus_share": (0.0, 0.002),
-    "ln_vco2": (0.015, 0.015),
+    "ln_vco2": (0.022, 0.022),
     "rq": (0.003, 0.003),
     "ln_cardiac_output": (0.03, 0.03),
     "standard_base_excess": (0.2, 0.25),
@@ -42,7 +42,7 @@ ACTIVE = PASSIVE | {
     "logit_dead_space": (0.06, 0.05),
     "ln_vco2": (0.06, 0.035),
     "ln_cardiac_output": (0.08, 0.04),
-    "standard_base_excess": (0.7, 0.45),
+    "standard_base_excess": (0.9, 0.5),
     "logit_defence": (0.05, 0.05),
 }
 # Events widen the jump (SD on the parameter's own scale). Sizes: goligher2014 (PEEP: P/F change median 9.5, IQR -16

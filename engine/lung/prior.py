@@ -13,7 +13,7 @@ logit_shunt           logit 0.13 (0.9)        90 % within 3 and 40 %: intensive 
                                               common practice, no source
 ln_vq_log_sd          ln 0.9 (0.4)            healthy 0.36-0.47 (cardus1997), severe above 1.5 (memory)
 logit_dead_space      logit 0.40 (0.7)        VD/VT 0.58 (0.09) in early ARDS (nuckton2002) less the series part
-ln_series_ml          ln 1.42 mL/kg (0.33)    1.5 (SD 0.5) mL/kg PBW, synthesis of fletcher1984, kiiski1992,
+ln_series_ml          ln 1.42 mL/kg (0.25)    1.5 (SD 0.5) mL/kg PBW, synthesis of fletcher1984, kiiski1992,
                                               haudebourg2022
 apparatus_share       0.75 (0.12)             campbell2000, prat2003: 0.5 to 1.0 of the nominal volume
 ln_vco2               ln 3.1 mL/kg (0.23)     220 (SD 50) mL/min (stapel2015, kagan2018)
@@ -70,7 +70,7 @@ WIDTH = {
     "logit_shunt": 0.9,
     "ln_vq_log_sd": 0.4,
     "logit_dead_space": 0.7,
-    "ln_series_ml": 0.33,
+    "ln_series_ml": 0.25,
     "apparatus_share": 0.12,
     "ln_vco2": 0.23,
     "rq": 0.05,
@@ -87,7 +87,7 @@ CONDITION: dict[str, dict[str, tuple[float, float]]] = {
 }
 ACTIVE_IF_TRIGGERING = 0.97
 ACTIVE_IF_SUPPORTED = 0.97
-ACTIVE_IF_SEEN_PASSIVE = 0.35  # total rate charted and equal to the set one
+ACTIVE_IF_SEEN_PASSIVE = 0.05  # total rate charted and equal to the set one
 ACTIVE_IF_UNKNOWN = 0.7
 
 
@@ -167,7 +167,9 @@ def prior_of(patient: Patient, breathing: Breathing, standard_base_excess_mmol_p
         width[name] = float(np.hypot(width[name], kg_sd))
     centre["standard_base_excess"] = standard_base_excess_mmol_per_l
     return Prior(
-        np.array([centre[n] for n in PARAMETERS]), np.array([width[n] for n in PARAMETERS]), _active(breathing)
+        np.array([centre[n] for n in PARAMETERS]),
+        np.array([width[n] for n in PARAMETERS]),
+        _active(breathing),
     )
 
 
