@@ -31,6 +31,10 @@ SETTING_WORDS = {
 }
 """Settings fields as they are spoken."""
 
+LEAST_RATE_PER_MIN = 0.5
+"""Less is a disconnected patient, not a rate to compute with."""
+
+_LEAST_BREATH_ML = 1.0
 _BODY_C = 37.0
 _PH_PER_C = -0.0147  # anaerobic blood, T. B. Rosenthal, J. Biol. Chem. 173, 25-30, 1948 (from memory)
 
@@ -138,7 +142,7 @@ def tidal_volume_ml(moment: Moment) -> tuple[float, str] | None:
     if moment.settings.mode == "volume" and volume is not None:
         return volume, "set"
     exhaled = moment.latest("exhaled_tidal_volume_ml")
-    if exhaled is not None and exhaled[0] > 0:
+    if exhaled is not None and exhaled[0] >= _LEAST_BREATH_ML:
         return exhaled[0], f"exhaled at {exhaled[1]:%H:%M}"
     return (volume, "last set") if volume is not None else None
 
@@ -147,13 +151,15 @@ def breaths_per_min(moment: Moment) -> tuple[float, str] | None:
     """The rate in force and where it comes from: ``measured at HH:MM``, or ``set``.
 
     A measured total rate of the last four hours rules unless the set rate was changed after it, or stands
-    above it. None where no rate is charted, or where it is 0.
+    above it. None where no rate is charted, or hardly any.
     """
     rate = moment.settings.rate_per_min
     total = moment.latest("total_rate_per_min")
     if total is not None and total[1] >= moment.since("rate_per_min") and total[0] >= (rate or 0.0):
-        return (total[0], f"measured at {total[1]:%H:%M}") if total[0] > 0 else None
-    return (rate, "set") if rate else None
+        rate, whence = total[0], f"measured at {total[1]:%H:%M}"
+    else:
+        whence = "set"
+    return (rate, whence) if rate is not None and rate >= LEAST_RATE_PER_MIN else None
 
 
 def station_pressure_mmhg(site: Site) -> tuple[float, str]:

@@ -6,6 +6,7 @@ from engine.physics.mechanics import compliance_ml_per_cmh2o
 
 _READING = 1.0  # cmH2O: pressures are read to the whole centimetre
 _COMPLIANCE = (8.0, 150.0)  # mL/cmH2O: textbook ranges 25 to 90, halved twice and more
+_LEAST_STEP = 0.1  # cmH2O: keeps a compliance finite
 _PRESSURE_CONTROL_GAP = 4.0  # cmH2O
 _RATE_ALLOWANCE = 1.0
 
@@ -55,7 +56,10 @@ def peep_against_plateau(moment: Moment) -> Check | None:
     plateau, peep, volume = moment.measured("plateau_cmh2o"), _peep(moment), tidal_volume_ml(moment)
     if plateau is None or peep is None or volume is None or plateau <= peep:
         return None
-    compliance, (low, high) = float(compliance_ml_per_cmh2o(volume[0], plateau, peep)), _COMPLIANCE
+    compliance, (low, high) = (
+        float(compliance_ml_per_cmh2o(volume[0], max(plateau, peep + _LEAST_STEP), peep)),
+        _COMPLIANCE,
+    )
     ok = low <= compliance <= high
     return Check(
         name="PEEP and plateau fit the volume",

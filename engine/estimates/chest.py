@@ -21,6 +21,7 @@ RATE_ALLOWANCE = 1.0
 
 _UNKNOWN = "no total rate is charted, so whether the patient was passive is not known"
 _S_PER_MIN, _ML_PER_L = 60.0, 1000.0
+_LEAST_STEP = 0.1  # cmH2O: keeps a compliance finite
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -52,7 +53,7 @@ class Mechanics:
         if self.plateau_cmh2o is None or self.peep_cmh2o is None:
             return None
         found = float(driving_pressure_cmh2o(self.plateau_cmh2o, self.peep_cmh2o))
-        return found if found > 0 else None
+        return found if found >= _LEAST_STEP else None
 
     @property
     def compliance_ml_per_cmh2o(self) -> float | None:

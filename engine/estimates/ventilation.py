@@ -10,6 +10,7 @@ ASSUMED_VCO2_ML_PER_MIN = 220.0
 
 ARDS_NETWORK = "ARDS Network 2000 N Engl J Med 342:1301"
 _METABOLISM_HOURS = 4.0
+_LEAST_L_PER_MIN = 0.1  # less is a disconnected patient
 
 
 def _minute_l(moment: Moment) -> tuple[float, str] | None:
@@ -19,7 +20,7 @@ def _minute_l(moment: Moment) -> tuple[float, str] | None:
         tidal_volume_ml(moment),
         breaths_per_min(moment),
     )
-    if measured:
+    if measured is not None and measured >= _LEAST_L_PER_MIN:
         return measured, f"{measured:g} L/min measured"
     if volume is None or rate is None:
         return None

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from engine.checks.breathing import weight_for_volume_kg
+from engine.checks.moment import LEAST_RATE_PER_MIN
 from engine.estimates.chest import RATE_ALLOWANCE, Mechanics, flow_of, inspiratory_time_of
 from engine.limits.row import Array, Uncertain, middle
 from engine.physics.mechanics import (
@@ -33,6 +34,7 @@ _COMPLIANCE_SD, _RESISTANCE_SD = 0.10, 0.20
 # Textbook ranges of ventilated adults, from memory: compliance, mL/cmH2O; resistance with tube, cmH2O s/L.
 _OBSTRUCTIVE = ((50.0, 90.0), (15.0, 30.0))
 _OTHERS = ((25.0, 80.0), (5.0, 15.0))
+_EMPTY_AFTER = 50.0  # time constants
 _CAUTION = (2.0, 3.0)
 """The lung empties two to three times slower than resistance x compliance says: Richard 2003 Intensive Care
 Med 29:1078, 1.2-1.4 s against 0.5."""
@@ -68,11 +70,14 @@ class Tried:
 
     @property
     def rate_per_min(self) -> Uncertain:
-        """The rate the chest lives with: the total one, never less than the set one."""
-        if self.total_rate_per_min is None:
-            return self.settings.rate_per_min or None
-        fastest: Array = np.maximum(self.total_rate_per_min, self.settings.rate_per_min or 0.0)
-        return fastest if fastest.ndim else float(fastest)
+        """The rate the chest lives with: the total one, never less than the set one; hardly any is none."""
+        rate = self.settings.rate_per_min or 0.0
+        fastest: Array = np.maximum(
+            rate if self.total_rate_per_min is None else self.total_rate_per_min, rate
+        )
+        if not np.any(fastest >= LEAST_RATE_PER_MIN):
+            return None
+        return np.where(fastest >= LEAST_RATE_PER_MIN, fastest, np.nan) if fastest.ndim else float(fastest)
 
     @property
     def peep_moves(self) -> bool:
@@ -242,5 +247,6 @@ def trapped_draws_ml(tried: Tried, left_s: Uncertain, time_constants_s: Array) -
     """Volume that one compartment would keep back at end-expiration; None where the breath is not known."""
     if tried.volume_ml is None or left_s is None:
         return None
-    kept = trapped_volume_ml(tried.volume_ml, np.maximum(left_s, 0.0), time_constants_s)
+    emptied_s = _EMPTY_AFTER * time_constants_s  # longer than this changes nothing and would overflow
+    kept = trapped_volume_ml(tried.volume_ml, np.clip(left_s, 0.0, emptied_s), time_constants_s)
     return np.broadcast_to(kept, time_constants_s.shape)
