@@ -138,7 +138,7 @@ def _target(target: Target | None, window: _Window, units: Units) -> list[Trace]
         },
         _words(
             "target",
-            max(x[0], window.pao2[0] * 1.015),
+            max(x[0], window.pao2[0]) * 1.012,
             min(y[1], window.paco2[1]) - 0.012 * (window.paco2[1] - window.paco2[0]),
             "bottom right",
             "@target",

@@ -60,11 +60,17 @@ def cautions_list(forecast: Forecast) -> str:
 
 
 def checks_list(checks: Sequence[Check]) -> str:
-    """The checks that are not passed; the passed ones stay out of the way."""
-    doubtful = [check for check in checks if check.ok is False]
-    if not doubtful:
+    """The checks that are not passed, the latest of each kind first; the passed ones stay out of the way."""
+    kinds: dict[str, list[Check]] = {}
+    for check in reversed(checks):
+        if check.ok is False:
+            kinds.setdefault(check.name, []).append(check)
+    if not kinds:
         return ""
-    lines = "".join(
-        f"<li>{escape(check.says)} <small>{escape(check.source)}</small></li>" for check in doubtful
-    )
+    lines = "".join(f"<li>{_doubt(*found)}</li>" for found in kinds.values())
     return f'<div class="fb-side fb-checks"><h3>Doubtful in the chart</h3><ul>{lines}</ul></div>'
+
+
+def _doubt(latest: Check, *earlier: Check) -> str:
+    before = f" {len(earlier)} more like it before." if earlier else ""
+    return f"{escape(latest.says)}{before} <small>{escape(latest.source)}</small>"

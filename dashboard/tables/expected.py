@@ -28,11 +28,9 @@ def expected_table(case: Case, forecast: Forecast, units: Units, now: datetime) 
 
 
 def _when(forecast: Forecast) -> str:
-    return (
-        "next gas, settled"
-        if forecast.minutes is None
-        else f"gas {forecast.minutes:.0f} min after the change"
-    )
+    when = "next gas, settled" if forecast.minutes is None else f"{forecast.minutes:.0f} min after the change"
+    whole = forecast.in_target["all"]
+    return when if whole is None else f"{when}<br>{chance_text(whole)} all in target"
 
 
 def _head(quantity: str, target: Target | None, units: Units) -> str:

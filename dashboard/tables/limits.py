@@ -132,6 +132,8 @@ def _margin(limit: Limit, units: Units) -> str:
     margin = margin_of(limit)
     if margin is None:
         return "not known"
+    if round(margin.share, 6) == 0:
+        return f"at the limit, {_number(margin.end, limit, units)}"
     word = "left to" if limit.ok else "above" if margin.above else "below"
     return f"{_number(abs(margin.left), limit, units)} {word} {_number(margin.end, limit, units)}"
 

@@ -4,6 +4,7 @@ from contextlib import suppress
 from datetime import datetime
 
 import streamlit as st
+from streamlit.delta_generator import DeltaGenerator
 
 from dashboard import cached, live, session
 from dashboard.charts.plane import plane
@@ -40,16 +41,19 @@ PICTURE_HEIGHT_PX = 470
 def show() -> None:
     """One patient, one change, one forecast."""
     state, now = session.bed(), session.moment()
+    st.html(f'<div class="fb-safety">{SAFETY}</div>')
     with st.container(key="top", horizontal=True, vertical_alignment="center"):
         _who()
         _choices(state)
     held = state.in_hand
     if held is None:
-        st.info("No patient in hand. Choose a demo patient or open a case file above.")
+        _upload_note(state)
+        st.html(note("No patient in hand. Choose a demo patient or open a case file above.", good=True))
     else:
         trial, result = st.columns([27, 100], gap="medium")
         with trial, st.container(key="trial"):
-            _trial(state, held.case)
+            _trial(state)
+            busy = st.empty()
         with result:
             if session.is_unread():
                 with st.empty().container():  # clears what stood here of the patient before
@@ -57,8 +61,7 @@ def show() -> None:
                 session.mark_read()
                 st.rerun()
             with st.container():
-                _result(state, held.case, now)
-    st.html(f'<div class="fb-safety">{SAFETY}</div>')
+                _result(state, held.case, now, busy)
 
 
 # -------------------------------------------------------------------------------------------- top of the page
@@ -81,7 +84,7 @@ def _choices(state: Bed) -> None:
         key="patient",
         on_change=session.choose_patient,
         label_visibility="collapsed",
-        width=230,
+        width=215,
     )
     with st.popover("File", key="file"):
         _file(state)
@@ -124,7 +127,7 @@ def _units(state: Bed) -> None:
 # ----------------------------------------------------------------------------------------------- try a change
 
 
-def _trial(state: Bed, case: Case) -> None:
+def _trial(state: Bed) -> None:
     st.html('<h2 class="fb-heading">Try a change</h2>')
     for field in fields_to_try(session.charted()):
         _number(state, field)
@@ -181,13 +184,17 @@ def _first_look(state: Bed, case: Case, now: datetime) -> None:
             cached.fitted(case)
 
 
-def _result(state: Bed, case: Case, now: datetime) -> None:
+def _result(state: Bed, case: Case, now: datetime, busy: DeltaGenerator) -> None:
     _upload_note(state)
-    forecast = _forecast(state, case, now)
+    with busy:
+        answer = _forecast(state, case, now)
+    forecast = answer if isinstance(answer, Forecast) else None
     if forecast is not None:
         st.html(
             expected_table(case, forecast, state.units, now) + tried_line(forecast, state.effort_stops, now)
         )
+    else:
+        st.html(note(str(answer)))
     picture, beside = st.columns([60, 40], gap="medium")
     with picture:
         _picture(state, case, forecast, now)
@@ -237,14 +244,13 @@ def _show(text: str) -> None:
         st.html(text)
 
 
-def _forecast(state: Bed, case: Case, now: datetime) -> Forecast | None:
-    """The forecast of what is being tried, or the reason for none on the screen."""
+def _forecast(state: Bed, case: Case, now: datetime) -> Forecast | str:
+    """The forecast of what is being tried, or the reason for none."""
     try:
         with st.spinner("Working out the forecast."):
             return cached.forecast(case, state.tried, at=now, effort_stops=state.effort_stops)
     except NothingToSay as why:
-        st.html(note(f"No forecast: {why}"))
+        return f"No forecast: {why}."
     except Impossible as why:
         label = SETTING_LABELS.get(why.field, why.field)
-        st.html(note(f"No forecast of this change: {label} {why.value} cannot be; expected {why.expected}."))
-    return None
+        return f"No forecast of this change: {label} {why.value} cannot be; expected {why.expected}."

@@ -263,6 +263,26 @@ def test_a_case_without_a_gas_says_why_there_is_no_forecast(app, case, html_of):
     assert "No forecast: " in page and "no blood gas" in page and "no usable gas" in page
 
 
+def test_without_demo_patients_the_page_asks_for_a_file(
+    app, quick_engine, case, html_of, monkeypatch, tmp_path
+):
+    monkeypatch.setattr(demos, "FOLDER", tmp_path)
+    app.run()
+    assert not app.exception and "No patient in hand" in html_of(app)
+    upload(app, "{")
+    assert "File not opened, nothing changed." in html_of(app)
+    upload(app, text_from_case(case))
+    assert "<b>Bed 7</b>" in html_of(app) and "Expected" in html_of(app)
+
+
+def test_a_broken_demo_file_is_left_out(app, quick_engine, case, monkeypatch, tmp_path):
+    (tmp_path / "good_one.json").write_text(text_from_case(case))
+    (tmp_path / "broken.json").write_text("{")
+    monkeypatch.setattr(demos, "FOLDER", tmp_path)
+    app.run()
+    assert not app.exception and app.selectbox(key="patient").options == ["Bed 7 · good one"]
+
+
 def test_what_is_downloaded_reads_back_as_the_same_case(case):
     from engine.reading.case_file import case_from_text
 

@@ -64,6 +64,12 @@ def test_values_used_stand_beside_the_result(forecast_of, now):
     assert "nothing; all as charted" in words(tried_line(forecast_of(), False, now))
 
 
+def test_the_chance_of_the_whole_target_stands_at_the_row(case, forecast_of, now):
+    assert rows(expected_table(case, forecast_of(), Units(), now))[2][0].endswith(
+        "settled 50 % all in target"
+    )
+
+
 # ----------------------------------------------------------------------------------------------------- limits
 
 
@@ -88,6 +94,12 @@ def test_margins_to_either_side(make_limit, value, end, ok, left):
 )
 def test_no_margin_where_something_is_unknown(make_limit, value, end, ok):
     assert margin_of(make_limit("x", value, end, ok)) is None
+
+
+def test_a_value_on_its_limit_is_at_it(make_limit):
+    assert "at the limit, 5 cmH₂O" in limits_table(
+        [make_limit("peep", 5.0, "5 to 24 cmH2O", True, unit="cmH2O")], Units()
+    )
 
 
 def test_breaches_come_first_then_the_least_room_then_the_unknown(make_limit):
@@ -213,6 +225,17 @@ def test_only_doubtful_checks_are_shown():
     shown = words(checks_list([check("good", True), check("doubt", False), check("unknown", None)]))
     assert "doubt says source2031" in shown and "good" not in shown and "unknown" not in shown
     assert checks_list([check("good", True)]) == ""
+
+
+def test_repeated_doubts_are_told_once_the_latest_first():
+    def doubt(name, says):
+        return Check(name=name, value=None, limit=None, ok=False, says=says, source="source2031")
+
+    shown = words(
+        checks_list([doubt("a", "first"), doubt("b", "other"), doubt("a", "second"), doubt("a", "third")])
+    )
+    assert shown.startswith("Doubtful in the chart third 2 more like it before.")
+    assert "other source2031" in shown and "first" not in shown and "second" not in shown
 
 
 # --------------------------------------------------------------------------------------------------- escaping
