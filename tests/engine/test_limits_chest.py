@@ -63,7 +63,7 @@ def test_pressures_of_a_larger_breath():
 
 
 def test_spread_grows_with_the_step():
-    """A plateau of 27 is safer unchanged than as the prediction from a smaller breath, or from another PEEP."""
+    """A plateau of 27 is safer unchanged than predicted from a smaller breath, or from another PEEP."""
     unchanged = find("plateau", chest=replace(CHEST, plateau_cmh2o=27)).probability
     larger = find("plateau", tried=replace(SETTINGS, tidal_volume_ml=510)).probability
     peep = find("plateau", tried=replace(SETTINGS, peep_cmh2o=13)).probability
