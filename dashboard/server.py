@@ -65,7 +65,7 @@ class _Headers:
 
 @asynccontextmanager
 async def _lifespan(app: st.App) -> AsyncIterator[dict[str, Any]]:
-    logging.getLogger("streamlit.error_util").addFilter(_without_values)
+    logging.getLogger("streamlit.error_util").addFilter(without_values)
     await anyio.to_thread.run_sync(_warm)
     yield {}
 
@@ -81,7 +81,7 @@ def _warm() -> None:
     gc.freeze()
 
 
-def _without_values(record: logging.LogRecord) -> bool:
+def without_values(record: logging.LogRecord) -> bool:
     """An exception's text may hold a patient's values: keep its kind and place, drop its words."""
     if record.exc_info:
         kind, _, trace = record.exc_info

@@ -125,7 +125,10 @@ def _value(limit: Limit, units: Units) -> str:
 
 def _limit(limit: Limit, units: Units) -> str:
     ends = _ends(limit)
-    return " to ".join(_number(end, limit, units) for end in ends) if ends else "–"
+    if not ends:
+        return "–"
+    *first, last = (_number(end, limit, units) for end in ends)
+    return " to ".join([*(number.split()[0] for number in first), last])
 
 
 def _margin(limit: Limit, units: Units) -> str:

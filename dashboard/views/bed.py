@@ -49,19 +49,34 @@ def show() -> None:
     if held is None:
         _upload_note(state)
         st.html(note("No patient in hand. Choose a demo patient or open a case file above.", good=True))
-    else:
-        trial, result = st.columns([27, 100], gap="medium")
-        with trial, st.container(key="trial"):
-            _trial(state)
-            busy = st.empty()
-        with result:
-            if session.is_unread():
-                with st.empty().container():  # clears what stood here of the patient before
-                    _first_look(state, held.case, now)
-                session.mark_read()
-                st.rerun()
-            with st.container():
-                _result(state, held.case, now, busy)
+        return
+    page, unread = st.container(), session.is_unread()
+    trial, result = page.columns([27, 100], gap="medium")
+    above, below = _place(result, unread), _place(page, unread)
+    with trial, st.container(key="trial"):
+        _trial(state)
+        busy = st.empty()
+    if unread:
+        _first_look(state, held.case, now, above, below)
+        session.mark_read()
+        st.rerun()
+    with busy:
+        answer = _forecast(state, held.case, now)
+    forecast = answer if isinstance(answer, Forecast) else None
+    with above:
+        _upload_note(state)
+        if isinstance(answer, str):
+            st.html(note(answer))
+        _result(state, held.case, forecast, now)
+    with below:
+        _gases(state, held.case, now)
+        if forecast is not None:
+            st.html('<h2 class="fb-heading">Limits</h2>' + limits_table(forecast.limits, state.units))
+
+
+def _place(where: DeltaGenerator, fresh: bool) -> DeltaGenerator:
+    """Room for what concerns one patient; a fresh one first loses what stood there of the one before."""
+    return where.empty().container() if fresh else where.container()
 
 
 # -------------------------------------------------------------------------------------------- top of the page
@@ -171,30 +186,27 @@ def _number(state: Bed, field: Field) -> None:
 # ------------------------------------------------------------------------------------------------- the result
 
 
-def _first_look(state: Bed, case: Case, now: datetime) -> None:
+def _first_look(state: Bed, case: Case, now: datetime, above: DeltaGenerator, below: DeltaGenerator) -> None:
     """What is measured stands at once; the lung behind it takes some seconds."""
-    _upload_note(state)
-    gases = len(case.usable_gases())
-    with st.spinner(
-        f"Reading {gases} gases of this stay: some seconds at the first look at a patient.", show_time=True
-    ):
-        _picture(state, case, None, now)
+    with below:
         _gases(state, case, now)
-        with suppress(NothingToSay):  # said where the forecast would stand
+    with above:
+        _upload_note(state)
+        gases = len(case.usable_gases())
+        words = f"Reading {gases} gases of this stay: some seconds at the first look at a patient."
+        with (
+            st.spinner(words, show_time=True),
+            suppress(NothingToSay),
+        ):  # no gas: said where a forecast would stand
+            _picture(state, case, None, now)
             cached.fitted(case)
 
 
-def _result(state: Bed, case: Case, now: datetime, busy: DeltaGenerator) -> None:
-    _upload_note(state)
-    with busy:
-        answer = _forecast(state, case, now)
-    forecast = answer if isinstance(answer, Forecast) else None
+def _result(state: Bed, case: Case, forecast: Forecast | None, now: datetime) -> None:
     if forecast is not None:
         st.html(
             expected_table(case, forecast, state.units, now) + tried_line(forecast, state.effort_stops, now)
         )
-    else:
-        st.html(note(str(answer)))
     picture, beside = st.columns([60, 40], gap="medium")
     with picture:
         _picture(state, case, forecast, now)
@@ -202,9 +214,6 @@ def _result(state: Bed, case: Case, now: datetime, busy: DeltaGenerator) -> None
         if forecast is not None:
             st.html(_limits_and_times(forecast, state, now))
         _show(checks_list(cached.checks(case)))
-    if forecast is not None:
-        st.html('<h2 class="fb-heading">Limits</h2>' + limits_table(forecast.limits, state.units))
-    _gases(state, case, now)
 
 
 def _limits_and_times(forecast: Forecast, state: Bed, now: datetime) -> str:

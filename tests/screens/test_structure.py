@@ -9,6 +9,7 @@ import tomllib
 from pathlib import Path
 
 import pytest
+from streamlit import error_util
 
 from dashboard import server
 
@@ -112,21 +113,22 @@ def test_a_bare_process_starts_and_ends_cleanly(tmp_path):
 
 
 def test_an_error_reaches_the_log_without_a_patient_s_values():
-    said = []
+    log, said = error_util._LOGGER, []
 
     class Listener(logging.Handler):
         def emit(self, record):
             said.append(self.format(record))
 
-    log = logging.Logger(
-        "error_util"
-    )  # as the screen library's own, which app start fits with the same filter
-    log.addFilter(server._without_values)
-    log.addHandler(Listener())
+    listener = Listener()
+    log.addFilter(server.without_values)
+    log.addHandler(listener)
     try:
         raise ValueError("Bed 7: paco2_mmhg = 53")
     except ValueError as why:
-        log.error("Uncaught app execution", exc_info=why)
+        error_util.handle_uncaught_app_exception(why)
+    finally:
+        log.removeFilter(server.without_values)
+        log.removeHandler(listener)
     assert said == [f"ValueError at test_structure.py:{line_of('raise ValueError')}"]
 
 

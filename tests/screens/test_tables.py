@@ -141,6 +141,11 @@ def test_every_limit_shows_number_limit_margin_and_source(make_limit):
     }  # fmt: skip
 
 
+def test_a_range_names_its_unit_once(make_limit):
+    kpa = limits_table([make_limit("paco2_brain", 40.0, "35 to 45 mmHg", True, unit="mmHg")], Units("kPa"))
+    assert "4.7 to 6.0 kPa (hard)" in kpa and ">5.3 kPa<" in kpa and "0.7 kPa left to 4.7 kPa" in kpa
+
+
 def test_the_glance_leaves_out_the_nearest_and_the_unknown(make_limit):
     limits = [make_limit(f"row{n}", 30.0 - n, 30.0, True) for n in range(1, 7)] + [
         make_limit("u", None, 1.0, None)
