@@ -1,5 +1,6 @@
 """Checks of FiO2: can it have given this PaO2, and was it charted when it was turned?"""
 
+from engine.checks.haemoglobin import COHB_LIMIT
 from engine.checks.moment import Moment, at_37, station_pressure_mmhg
 from engine.checks.row import PRACTICE, Check, at, percent, unless
 from engine.physics.air import palvo2_mmhg
@@ -42,7 +43,8 @@ def below_alveolar(moment: Moment) -> Check | None:
 def fio2_standing(moment: Moment) -> Check | None:
     """FiO2 1.0 or 0.21 left standing in the chart beside a saturation at which someone would have turned it.
 
-    Judged at the last saturation before FiO2 changes or the chart ends, one row a stretch.
+    Judged at the last saturation before FiO2 changes or the chart ends, one row a stretch. Pure oxygen for
+    carbon monoxide is meant, whatever SpO2 says.
     """
     fio2, saturation = moment.settings.fio2, _saturation(moment.entry)
     if fio2 not in (_FULL, _AIR) or saturation is None:
@@ -54,7 +56,8 @@ def fio2_standing(moment: Moment) -> Check | None:
             return None
     minutes = (moment.time - moment.since("fio2")).total_seconds() / 60
     if fio2 == _FULL:
-        ok = minutes < _FULL_STANDS_MINUTES or saturation < _FULL_DOUBTED_FROM
+        fits = saturation < _FULL_DOUBTED_FROM or _poisoned(moment)
+        ok = minutes < _FULL_STANDS_MINUTES or fits
         doubt = "was it lowered and not charted?"
     else:
         ok = minutes < _AIR_STANDS_MINUTES or saturation >= _AIR_DOUBTED_BELOW
@@ -88,6 +91,12 @@ def fio2_stepped_to_full(moment: Moment) -> Check | None:
         + unless(explained, ": is 100 % meant, not 1 % above something, 10 %, or oxygen for a moment?"),
         source=PRACTICE,
     )
+
+
+def _poisoned(moment: Moment) -> bool:
+    """Whether a gas of the stay up to here showed carbon monoxide."""
+    gases = [e.gas for e in moment.case.entries[: moment.number + 1] if e.gas is not None]
+    return any((gas.cohb or 0.0) >= COHB_LIMIT for gas in gases)
 
 
 def _saturation(entry: Entry) -> float | None:

@@ -111,6 +111,12 @@ def test_carboxyhaemoglobin_makes_spo2_worthless():
     assert "no reason for a lower FiO2" in found.says
 
 
+def test_pure_oxygen_for_carbon_monoxide_is_no_slip():
+    parts = {"settings": {"fio2": 1.0}, "measured": {"spo2": 0.99}}
+    assert row(chart(**parts), "FiO2 left standing").ok is False
+    assert row(chart(**parts, gas={"cohb": 0.25}), "FiO2 left standing").ok is True
+
+
 def test_sea_level_is_assumed_only_aloud():
     assert "760 mmHg is assumed" in row(chart(site={}), "Barometric pressure").says
     found = row(chart(site={"altitude_m": 3500}), "Barometric pressure")
