@@ -8,6 +8,7 @@ from pathlib import Path
 
 import pytest
 
+from dashboard.charts.band import OPACITY
 from dashboard.wording import (
     FIELDS,
     PALETTES,
@@ -74,8 +75,8 @@ def test_text_stands_out_from_the_tint_of_the_expected_row(scheme, text):
 @pytest.mark.parametrize("scheme", PALETTES)
 def test_times_stand_out_where_both_bands_lie_under_them(scheme):
     palette = PALETTES[scheme]
-    outer = laid_over(palette["paper"], palette["forecast"], 0.16)
-    assert contrast(palette["ink"], laid_over(outer, palette["forecast"], 0.30)) >= TEXT_CONTRAST
+    outer = laid_over(palette["paper"], palette["forecast"], OPACITY[0.9])
+    assert contrast(palette["ink"], laid_over(outer, palette["forecast"], OPACITY[0.5])) >= TEXT_CONTRAST
 
 
 def style_sheet() -> str:
