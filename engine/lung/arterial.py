@@ -1,7 +1,7 @@
 """Which arterial gas a belief gives under a breathing, once settled.
 
-Dead space has a series part, in mL a breath, and an alveolar part, a fraction of what passes it (`ventilation.md`'s
-two-part form; fletcher1984, haudebourg2022). Below a tidal volume of about 1.5 times the series dead space the series
+Dead space has a series part, in mL a breath, and an alveolar part, a fraction of what passes it (fletcher1984,
+haudebourg2022). Below a tidal volume of about 1.5 times the series dead space the series
 part gives way (nunn1960: it shrinks with volumes under 350 mL), smoothly here, and no forecast is shown on a screen.
 """
 
@@ -17,6 +17,7 @@ from engine.physics.exchange import Exchange, steady_state
 Array = NDArray[np.float64]
 
 LARGEST_SERIES_SHARE = 0.75  # of a breath: above it some alveolar ventilation persists (briscoe1954)
+WIDEST_VQ_LOG_SD = 2.5  # drift in a heavy tail stops here: no lung is wider (severe is 1.5 and more)
 OWN_RATE_SPREAD = 0.05  # ln SD of a patient's own rate about the one charted
 OWN_RATE_LEAST = 0.6  # an active patient who does not trigger breathes at this share of the set rate, or more
 
@@ -87,7 +88,7 @@ def arterial_gas(
     vco2 = np.exp(belief.of("ln_vco2"))
     return steady_state(
         shunt=logistic(belief.of("logit_shunt")),
-        vq_log_sd=np.exp(belief.of("ln_vq_log_sd")),
+        vq_log_sd=np.exp(np.minimum(belief.of("ln_vq_log_sd"), np.log(WIDEST_VQ_LOG_SD))),
         alveolar_dead_space=logistic(belief.of("logit_dead_space")),
         alveolar_ventilation_l_per_min=now.alveolar_l_per_min * np.exp(taken_back),
         vco2_ml_per_min=vco2,

@@ -4,7 +4,7 @@ A state is eleven numbers on scales where a normal distribution is a fair belief
 of patient: *passive* (the ventilator does the breathing, little moves between gases) and *active* (the patient takes
 part, defends a PaCO2 of their own, and everything moves more). The kind is not charted; the gases tell.
 
-Sources of the means and SDs (rows of the project's reference collection, tests/reference):
+Sources of the means and SDs (references: `engine.lung`):
 
 ====================  ======================  ============================================================
 parameter             mean (SD)               source
