@@ -1,14 +1,14 @@
 """The lung of many units: arterial gas of a steady state, for thousands of lungs at once.
 
-A lung is a true shunt, perfused units whose ventilation-perfusion ratio is log-normal over blood flow, and alveolar
-dead space. In every unit gas and end-capillary blood are in equilibrium and oxygen, carbon dioxide and nitrogen
-balance; mixed venous contents close the loop, so that the whole lung takes up VO2 and gives off VCO2. Arterial
-tensions follow from mixed contents, never from averaged tensions.
+A lung is a true shunt, perfused units whose ventilation-perfusion ratio is log-normal over blood flow, and
+alveolar dead space. In every unit gas and end-capillary blood are in equilibrium and oxygen, carbon dioxide
+and nitrogen balance; mixed venous contents close the loop, so that the whole lung takes up VO2 and gives off
+VCO2. Arterial tensions follow from mixed contents, never from averaged tensions.
 
 Equations, per unit with expired ventilation over flow ``r`` (BTPS over blood) and K = 8.63 mmHg dL/mL::
 
     CO2   r PCO2 = K (CvCO2 - CcCO2)
-    O2    r (PIO2 - PO2 - FiO2 PCO2) = K (1 - FiO2) (CcO2 - CvO2)       nitrogen balance used, right at FiO2 1.0
+    O2    r (PIO2 - PO2 - FiO2 PCO2) = K (1 - FiO2) (CcO2 - CvO2)       nitrogen balance is in it
     pH    whole-blood base excess is one value in the whole lung        (Van Slyke, langzander2002)
 
 and per lung, with flow weights ``w`` and perfused flow (1 - s) Q::
@@ -16,17 +16,21 @@ and per lung, with flow weights ``w`` and perfused flow (1 - s) Q::
     CvO2  = sum(w CcO2)  - VO2  / (10 (1 - s) Q)
     CvCO2 = sum(w CcCO2) + VCO2 / (10 (1 - s) Q)
 
-Arterial blood keeps its STANDARD base excess (extracellular buffer line, clsi_c46), since the whole body has had time;
-blood inside the lung buffers as whole blood, since a capillary transit takes under a second.
+Arterial blood keeps its STANDARD base excess (extracellular buffer line, clsi_c46), since the whole body has
+had time; blood inside the lung buffers as whole blood, since a capillary transit takes under a second.
 
-Solved by Newton's method on all units, both mixed venous contents and arterial blood together: the unknowns of a unit
-meet other units only through the two venous contents, so each step eliminates the units (2 x 2 each) and solves a
-2 x 2 system a lung. Steps are in ln PO2, ln PCO2 and pH, bounded in size.
+Solved by Newton's method on all units, both mixed venous contents and arterial blood together: the unknowns
+of a unit meet other units only through the two venous contents, so each step eliminates the units (2 x 2
+each) and solves a 2 x 2 system a lung. Steps are in ln PO2, ln PCO2 and pH, bounded in size. The buffer line
+of the lung's blood follows arterial blood one step behind, which leaves about a fiftieth of its error a step.
+
+Arrays of the solver are (rows, lungs): a row for each unit, then mixed venous blood, then arterial blood. The
+last two meet no gas, so they are units of no ventilation, and of no weight, and are solved like any other.
 
 References
 ----------
-west1969 : J. B. West, "Ventilation-perfusion inequality and overall gas exchange in computer models of the lung",
-    Respir. Physiol. 7, 88-110, 1969 (the model of many units).
+west1969 : J. B. West, "Ventilation-perfusion inequality and overall gas exchange in computer models of the
+    lung", Respir. Physiol. 7, 88-110, 1969 (the model of many units).
 severinghaus1979, kelman1966 : saturation and its shift, see `engine.physics.oxygen`.
 douglas1988 : CO2 content of blood, see `engine.physics.carbon_dioxide`.
 langzander2002, clsi_c46 : base excess, see `engine.physics.acid_base`.
@@ -34,32 +38,43 @@ farhi1967 : L. E. Farhi, "Elimination of inert gas by the lung", Respir. Physiol
 """
 
 from dataclasses import dataclass
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from engine.physics.acid_base import ph_at_standard_base_excess
+from engine.physics.acid_base import (
+    hco3_mmol_per_l,
+    ph_at_standard_base_excess,
+    standard_base_excess_mmol_per_l,
+    whole_blood_base_excess_mmol_per_l,
+)
 from engine.physics.air import BODY_WATER_VAPOUR_MMHG
 from engine.physics.carbon_dioxide import CO2_CONSTANT, co2_pk, co2_solubility_mmol_per_l_mmhg
-from engine.physics.oxygen import O2_CAPACITY_ML_PER_G, O2_SOLUBILITY_ML_PER_DL_MMHG, po2_from_so2
+from engine.physics.oxygen import O2_CAPACITY_ML_PER_G, O2_SOLUBILITY_ML_PER_DL_MMHG, po2_from_so2_mmhg
 
 Array = NDArray[np.float64]
+Some = NDArray[np.bool_]
 
-LN10 = np.log(10.0)
+LN10 = float(np.log(10.0))
 K = 10.0 * CO2_CONSTANT  # mmHg dL/mL: L BTPS of gas against dL STPD of content
+ECF_BUFFER = float(standard_base_excess_mmol_per_l(8.4, 0.0) - standard_base_excess_mmol_per_l(7.4, 0.0))
+
 UNITS = 15  # of the V/Q distribution: within 1.1 % of PaO2 and 0.1 mmHg of PaCO2 to SD 1.8
 REACH = 3.5  # SD of flow and of ventilation that the units span
+VENOUS, ARTERY = -2, -1  # the rows below the units
 MOST_EXTRACTED = 0.9  # share of end-capillary O2 the tissues can take; beyond it VO2 falls (numerical guard)
+LEAST_NITROGEN = 1e-9  # of inspired gas: keeps blood that meets no gas solvable at FiO2 1.0
 DOUGLAS_PH = (6.8, 7.8)  # outside, the red-cell factor of douglas1988 is held: it is singular at 8.142
 LARGEST_STEP = 1.0  # of ln PO2 and ln PCO2 in one Newton step
 LARGEST_PH_STEP = 0.25
-FEW_STEPS = 5  # of a whole block; the lungs that need more go on by themselves
-STEPS = 60
-VENOUS_STEPS = 8
-SETTLED = 1e-5  # of ln PO2 and ln PCO2: far below any analyser
-LEVEL_SETTLED = 1e-4  # mmol/L of the buffer line
-LUNGS_AT_ONCE = 512  # a block that stays in the processor's cache
+ROUNDS = (3, 1, 2, 4, 8, 40)  # steps before the settled lungs are set aside, again and again
+SETTLED = 1e-4  # last step of ln PO2 and ln PCO2: what is left is about its square
+LEVEL_SETTLED = 2e-5  # mmol/L, last step of the buffer line: what is left is about a fiftieth
+LUNGS_AT_ONCE = 1024  # many enough that the calls cost little, few enough for the processor's cache
+START_SOLUBILITY = 4.0  # of CO2 in blood over gas (farhi1967), about 40 mmHg
+START_CO2 = 2.45  # mL/dL of CO2 content a mmol/L of bicarbonate, in the alkaline units that need it most
+START_HALDANE = 0.35  # mL of CO2 that blood takes up at no cost in PCO2 as it gives off a mL of O2
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -124,7 +139,8 @@ def steady_state(
     Returns
     -------
     Exchange
-        Arrays of the broadcast shape. NaN in, NaN out; a lung that does not converge is NaN and not ``settled``.
+        Arrays of the broadcast shape. NaN in, NaN out; a lung that does not converge is NaN and
+        not ``settled``.
     """
     given = np.broadcast_arrays(
         *(
@@ -145,15 +161,13 @@ def steady_state(
             )
         )
     )
-    shape, columns = given[0].shape, [np.ascontiguousarray(a).reshape(-1) for a in given]
-    blocks = [
-        _solve(_Lungs(*(c[start : start + LUNGS_AT_ONCE] for c in columns)), units)
-        for start in range(0, columns[0].size, LUNGS_AT_ONCE)
-    ]
-    pao2, paco2, ph, sao2, svo2, alveolar, held, settled = (
-        np.concatenate([b[i] for b in blocks]).reshape(shape) for i in range(8)
-    )
-    return Exchange(pao2, paco2, ph, sao2, svo2, alveolar, held > 0, settled > 0)
+    columns = np.array([a.reshape(-1) for a in given])
+    with np.errstate(all="ignore"):  # a lung that runs away ends as NaN and is said to be unsettled
+        blocks = [
+            _solve(_Lungs(*columns[:, start : start + LUNGS_AT_ONCE]), units)
+            for start in range(0, max(columns.shape[1], 1), LUNGS_AT_ONCE)
+        ]
+    return Exchange(*(np.concatenate(parts).reshape(given[0].shape) for parts in zip(*blocks, strict=True)))
 
 
 class _Lungs(NamedTuple):
@@ -173,14 +187,65 @@ class _Lungs(NamedTuple):
     temperature: Array
 
 
-class _Blood(NamedTuple):
-    """Blood at (ln PO2, ln PCO2, pH), and its linear answer to a step once pH follows its buffer line.
+class _Makeup(NamedTuple):
+    """What the blood of a lung keeps while its tensions move, each (lungs,).
 
-    ``so2``, ``o2`` and ``co2`` are values after the pH correction ``dph`` alone; ``_x`` and ``_y`` are slopes on ln PO2
-    and ln PCO2 along the buffer line.
+    Oxygen: ``capacity`` in mL/dL; ``shift`` of the curve in ln PO2 at pH 7.4 and a PCO2 of 1 mmHg. CO2:
+    ``dissolved`` in plasma in mL/dL/mmHg; ``bound`` over dissolved at pH 7.4, and ``bound_z``, the slope of
+    its logarithm on pH; ``cells`` as in douglas1988. Whole-blood base excess in mmol/L is ``hco3`` PCO2
+    10^(pH - 7.4) + ``buffer`` (pH - 7.4) - ``deoxy`` (1 - S) and a constant.
     """
 
+    capacity: Array
+    shift: Array
+    dissolved: Array
+    bound: Array
+    bound_z: Array
+    cells: Array
+    hco3: Array
+    buffer: Array
+    deoxy: Array
+
+
+def _makeup(hb: Array, temperature: Array) -> _Makeup:
+    def excess(ph: float, pco2: float, so2: float) -> Array:
+        return whole_blood_base_excess_mmol_per_l(ph, pco2, hb, so2)
+
+    nothing, pk = excess(7.4, 0.0, 1.0), co2_pk(7.4, temperature)
+    return _Makeup(
+        O2_CAPACITY_ML_PER_G * hb,
+        0.06 * np.log(40.0) + 0.024 * LN10 * (37.0 - temperature),
+        2.226 * co2_solubility_mmol_per_l_mmhg(temperature),
+        np.exp(LN10 * (7.4 - pk)),
+        LN10 * (1.0 - co2_pk(8.4, temperature) + pk),
+        0.0289 * hb,
+        excess(7.4, 1.0, 1.0) - nothing,
+        excess(8.4, 0.0, 1.0) - nothing,
+        nothing - excess(7.4, 0.0, 0.0),
+    )
+
+
+class _State(NamedTuple):
+    """Points in blood: ln PO2, ln PCO2 and pH."""
+
+    x: Array
+    y: Array
+    z: Array
+
+
+class _Blood(NamedTuple):
+    """Blood at some points, and its linear answer to a step once pH follows its buffer line.
+
+    ``o2`` and ``co2`` are contents in mL/dL after the pH correction ``dph`` alone; ``_x`` and ``_y`` are
+    slopes on ln PO2 and ln PCO2 along the buffer line, ``so2_z`` that on pH alone.
+    """
+
+    po2: Array
+    pco2: Array
     so2: Array
+    so2_x: Array
+    so2_y: Array
+    so2_z: Array
     o2: Array
     o2_x: Array
     o2_y: Array
@@ -192,319 +257,306 @@ class _Blood(NamedTuple):
     ph_y: Array
 
 
-class _Buffer(NamedTuple):
-    """``a PCO2 10^(pH - pk) + slope (pH - 7.4) - deoxy (1 - S) = level``: both base-excess equations have this form."""
-
-    a: float
-    pk: float
-    slope: Array
-    deoxy: Array
-    level: Array
+def _shift(y: Array, z: Array, makeup: _Makeup) -> Array:
+    """What takes ln PO2 of this blood to ln PO2 on the standard curve."""
+    return 0.40 * LN10 * (z - 7.4) - 0.06 * y + makeup.shift
 
 
-def _whole_blood(hb: Array, level: Array) -> _Buffer:
-    return _Buffer(0.0304, 6.1, 9.5 + 1.63 * hb, 0.2 * hb / (1.0 - 0.0143 * hb), level)
-
-
-def _whole_blood_level(hb: Array, state: "_State", so2: Array) -> Array:
-    """The level of whole blood's buffer line that goes through one arterial point."""
-    line = _whole_blood(hb, hb)
-    return np.asarray(
-        line.a * np.exp(state.y + LN10 * (state.z - line.pk)) + line.slope * (state.z - 7.4) - line.deoxy * (1.0 - so2)
-    )
-
-
-def _blood(state: "_State", hb: Array, temperature: Array, buffer: _Buffer) -> _Blood:
-    """Contents in mL/dL and their slopes."""
-    x, y, z = state
-    pco2 = np.exp(y)
-    shift = 0.40 * LN10 * (z - 7.4) + 0.06 * (np.log(40.0) - y) + 0.024 * LN10 * (37.0 - temperature)
-    p = np.exp(x + shift)
-    cubic = p * (p * p + 150.0)
+def _saturation(standard: Array) -> tuple[Array, Array]:
+    """Saturation at ln PO2 on the standard curve, and its slope."""
+    p = np.exp(standard)
+    square = p * p + 150.0
+    cubic = p * square
     so2 = cubic / (cubic + 23_400.0)
-    steep = 23_400.0 * p * (3.0 * p * p + 150.0) / (cubic + 23_400.0) ** 2  # dS / d ln P
+    return so2, so2 * (1.0 - so2) * (3.0 - 300.0 / square)
 
-    bicarbonate = buffer.a * pco2 * np.exp(LN10 * (z - buffer.pk))
-    misfit = bicarbonate + buffer.slope * (z - 7.4) - buffer.deoxy * (1.0 - so2) - buffer.level
-    stiff = LN10 * bicarbonate + buffer.slope + 0.40 * LN10 * buffer.deoxy * steep
-    dph = np.clip(-misfit / stiff, -LARGEST_PH_STEP, LARGEST_PH_STEP)
-    ph_x = -buffer.deoxy * steep / stiff
-    ph_y = -(bicarbonate - 0.06 * buffer.deoxy * steep) / stiff
+
+def _blood(state: _State, makeup: _Makeup, level: Array) -> _Blood:
+    """Contents and their slopes, on the buffer line of this level."""
+    x, y, z = state
+    alkali = z - 7.4
+    po2, pco2 = np.exp(x), np.exp(y)
+    so2, steep = _saturation(x + _shift(y, z, makeup))
     so2_z = 0.40 * LN10 * steep
+
+    hco3 = makeup.hco3 * pco2 * np.exp(LN10 * alkali)
+    haldane = makeup.deoxy * steep
+    stiff = LN10 * hco3 + makeup.buffer + 0.40 * LN10 * haldane
+    misfit = level + makeup.deoxy * (1.0 - so2) - makeup.buffer * alkali - hco3
+    dph = _bounded(misfit / stiff, LARGEST_PH_STEP)
+    ph_x = -haldane / stiff
+    ph_y = (0.06 * haldane - hco3) / stiff
     so2_x = steep + so2_z * ph_x
-    so2_y = -0.06 * steep + so2_z * ph_y
+    so2_y = so2_z * ph_y - 0.06 * steep
+    free_o2 = O2_SOLUBILITY_ML_PER_DL_MMHG * po2
 
-    capacity, dissolved = O2_CAPACITY_ML_PER_G * hb, O2_SOLUBILITY_ML_PER_DL_MMHG * np.exp(x)
-    o2 = capacity * (so2 + so2_z * dph) + dissolved
-
-    carried = np.exp(LN10 * (z - co2_pk(z, temperature)))
-    plasma = 2.226 * co2_solubility_mmol_per_l_mmhg(temperature) * pco2 * (1.0 + carried)
-    plasma_z = plasma * carried / (1.0 + carried) * LN10 * (1.042 + 0.00139 * (38.0 - temperature))
-    z_held = np.clip(z, *DOUGLAS_PH)
-    of_so2, of_ph = 3.352 - 0.456 * so2, 8.142 - z_held
-    cells = 0.0289 * hb / (of_so2 * of_ph)
-    co2_z = plasma_z * (1.0 - cells) - plasma * cells / of_ph * (z == z_held)
-    co2_s = -plasma * cells * 0.456 / of_so2
-    content = plasma * (1.0 - cells)
-    co2 = content + co2_z * dph + co2_s * so2_z * dph
+    dissolved = makeup.dissolved * pco2
+    bound = dissolved * (makeup.bound * np.exp(makeup.bound_z * alkali))
+    plasma = dissolved + bound
+    held = np.minimum(np.maximum(z, DOUGLAS_PH[0]), DOUGLAS_PH[1])
+    of_so2, of_ph = 3.352 - 0.456 * so2, 8.142 - held
+    cells = makeup.cells / (of_so2 * of_ph)
+    missing = plasma * cells
+    content = plasma - missing
+    co2_s = -0.456 * missing / of_so2
+    co2_z = makeup.bound_z * bound * (1.0 - cells) - missing / of_ph * (z == held) + co2_s * so2_z
     return _Blood(
+        po2,
+        pco2,
         so2,
-        o2,
-        capacity * so2_x + dissolved,
-        capacity * so2_y,
-        co2,
-        co2_z * ph_x + co2_s * so2_x,
-        content + co2_z * ph_y + co2_s * so2_y,
+        so2_x,
+        so2_y,
+        so2_z,
+        makeup.capacity * (so2 + so2_z * dph) + free_o2,
+        makeup.capacity * so2_x + free_o2,
+        makeup.capacity * so2_y,
+        content + co2_z * dph,
+        co2_z * ph_x + co2_s * steep,
+        content + co2_z * ph_y - 0.06 * co2_s * steep,
         dph,
         ph_x,
         ph_y,
     )
 
 
-def _nodes(vq_log_sd: Array, units: int) -> tuple[Array, Array]:
-    """Standard normal deviates of the units and their share of perfused flow, each (lungs, units).
-
-    Equal steps from -3.5 to 3.5 + SD: blood flow is normal about 0 and ventilation about SD, and both tails count. The
-    trapezium rule with Gaussian weights converges faster than any power of the step; at equal count it beat
-    Gauss-Hermite nodes threefold here, as it keeps nodes where the knee of the curve lies.
-    """
-    deviate = -REACH + (2.0 * REACH + vq_log_sd[:, None]) * np.linspace(0.0, 1.0, units)
-    weight = np.exp(-0.5 * deviate * deviate)
-    return deviate, weight / weight.sum(axis=1, keepdims=True)
+def _level(y: Array, z: Array, so2: Array, makeup: _Makeup) -> Array:
+    """The level of the buffer line through a point."""
+    alkali = z - 7.4
+    return makeup.hco3 * np.exp(y + LN10 * alkali) + makeup.buffer * alkali - makeup.deoxy * (1.0 - so2)
 
 
-def _mean(values: Array, weight: Array) -> Array:
-    """Weighted mean over the units of each lung."""
-    mean: Array = np.einsum("lu,lu->l", values, weight)
-    return mean
+def _bounded(step: Array, most: float) -> Array:
+    return np.minimum(np.maximum(step, -most), most)
 
 
-class _State(NamedTuple):
-    """A point in blood: ln PO2, ln PCO2 and pH."""
-
-    x: Array
-    y: Array
-    z: Array
-
-    def step(self, b: _Blood, dx: Array, dy: Array) -> "_State":
-        """One bounded step; pH follows its buffer line."""
-        dx, dy = (np.clip(d, -LARGEST_STEP, LARGEST_STEP) for d in (dx, dy))
-        return _State(self.x + dx, self.y + dy, self.z + b.dph + b.ph_x * dx + b.ph_y * dy)
-
-    def towards(self, b: _Blood, o2: Array, co2: Array) -> "_State":
-        """One Newton step towards blood of these contents."""
-        e1, e2 = o2 - b.o2, co2 - b.co2
-        det = b.o2_x * b.co2_y - b.o2_y * b.co2_x
-        return self.step(b, (e1 * b.co2_y - e2 * b.o2_y) / det, (e2 * b.o2_x - e1 * b.co2_x) / det)
-
-
-class _Closing(NamedTuple):
-    """What one Newton step of the units means for a lung: mean end-capillary and mixed venous contents."""
-
-    capillary_o2: Array
-    capillary_co2: Array
-    venous_o2: Array
-    venous_co2: Array
-    held: NDArray[np.bool_]
-
-    def rows(self, kept: NDArray[np.bool_]) -> "_Closing":
-        """The same for some of the lungs."""
-        o2, co2, venous_o2, venous_co2, held = self
-        return _Closing(o2[kept], co2[kept], venous_o2[kept], venous_co2[kept], held[kept])
+def _sum(values: Array, weight: Array) -> Array:
+    """Weighted sum over the rows of each lung."""
+    total: Array = np.einsum("ul,ul->l", values, weight)
+    return total
 
 
 class _Problem(NamedTuple):
-    """A block of lungs with its units laid out: (lungs, units) arrays, and the a-v differences they must feed."""
+    """A block of lungs with its rows laid out.
+
+    (rows, lungs): ventilation over flow ``r``, O2 ``inspired`` with it (r PIO2), and ``weight``, the share of
+    perfused flow. (lungs,): ``nitrogen``, K times its inspired fraction; ``uptake`` and ``output``, what
+    tissues take and give in mL per dL of perfused flow.
+    """
 
     lungs: _Lungs
+    makeup: _Makeup
     r: Array
+    inspired: Array
     weight: Array
-    pio2: Array
+    nitrogen: Array
     uptake: Array
     output: Array
 
-    def rows(self, kept: NDArray[np.bool_]) -> "_Problem":
+    def of(self, kept: Some) -> "_Problem":
         """The same problem for some of the lungs."""
-        return _Problem(_Lungs(*(a[kept] for a in self.lungs)), *(a[kept] for a in self[1:]))
+        lungs, makeup, *arrays = self
+        return _Problem(
+            _Lungs(*(a[kept] for a in lungs)),
+            _Makeup(*(a[kept] for a in makeup)),
+            *(a[..., kept] for a in arrays),
+        )
 
 
-class _Solution(NamedTuple):
-    """Where Newton's method stands, one row a lung: units, arterial blood, closing contents, buffer level, settled."""
+def _nodes(vq_log_sd: Array, units: int) -> tuple[Array, Array]:
+    """Standard normal deviates of the units and their share of perfused flow, each (units, lungs).
 
-    unit: _State
-    artery: _State
-    closing: _Closing
-    level: Array
-    settled: NDArray[np.bool_]
-
-
-def _solve(lungs: _Lungs, units: int) -> tuple[Array, ...]:
-    """Newton's method on one block of lungs; returns the fields of `Exchange` in order.
-
-    Most lungs settle within a few steps; the rest go on without them.
+    Equal steps from -3.5 to 3.5 + SD: blood flow is normal about 0 and ventilation about SD, and both tails
+    count. The trapezium rule with Gaussian weights converges faster than any power of the step; at equal
+    count it beat Gauss-Hermite nodes threefold here, as it keeps nodes where the knee of the curve lies.
     """
-    problem = _laid_out(lungs, units)
-    with np.errstate(all="ignore"):  # a lung that runs away ends as NaN and is said to be unsettled
-        found = _newton(problem, _start(problem), FEW_STEPS)
-        late = ~found.settled
-        if late.any():
-            rest = _newton(problem.rows(late), _rows(found, late), STEPS)
-            found = _merged(found, rest, late)
-        line = _whole_blood(lungs.hb, found.level)
-        so2 = _blood(found.artery, lungs.hb, lungs.temperature, line).so2
-        svo2 = _saturation_of_contents(found, lungs, line)
-        vented = _mean(problem.r * np.exp(found.unit.y), problem.weight) / _mean(problem.r, problem.weight)
-    pao2, paco2, ph = np.exp(found.artery.x), np.exp(found.artery.y), found.artery.z
-    known = (pao2, paco2, ph, so2, svo2, vented * (1.0 - lungs.dead))
-    held = (found.closing.held & found.settled).astype(float)
-    return (*(np.where(found.settled, v, np.nan) for v in known), held, found.settled.astype(float))
+    deviate = -REACH + (2.0 * REACH + vq_log_sd) * np.linspace(0.0, 1.0, units)[:, None]
+    weight = np.exp(-0.5 * deviate * deviate)
+    return deviate, weight / weight.sum(axis=0)
 
 
 def _laid_out(lungs: _Lungs, units: int) -> _Problem:
     deviate, weight = _nodes(lungs.vq_log_sd, units)
     perfused = lungs.output * (1.0 - lungs.shunt)
-    spread = np.exp(lungs.vq_log_sd[:, None] * deviate)
-    overall = lungs.ventilation * (1.0 - lungs.dead) / perfused
+    spread = np.exp(lungs.vq_log_sd * deviate)
+    r = spread * (lungs.ventilation * (1.0 - lungs.dead) / perfused / _sum(spread, weight))
+    no_gas = ((0, 2), (0, 0))  # the venous and the arterial row
+    r = np.pad(r, no_gas)
     return _Problem(
         lungs,
-        spread * (overall / _mean(spread, weight))[:, None],
-        weight,
-        (lungs.fio2 * (lungs.barometric - BODY_WATER_VAPOUR_MMHG))[:, None],
+        _makeup(lungs.hb, lungs.temperature),
+        r,
+        r * (lungs.fio2 * (lungs.barometric - BODY_WATER_VAPOUR_MMHG)),
+        np.pad(weight, no_gas),
+        K * np.maximum(1.0 - lungs.fio2, LEAST_NITROGEN),
         lungs.vo2 / (10.0 * perfused),
         lungs.vco2 / (10.0 * perfused),
     )
 
 
-def _start(problem: _Problem) -> _Solution:
-    """CO2 as a gas of one solubility (farhi1967), O2 by what the unit's gas can bring, pH by a straight line."""
-    lungs, r, weight, pio2, uptake, output = problem
-    share = 4.0 / (4.0 + r)
-    y = np.log(share * (K * output / _mean(r * share, weight))[:, None])
-    capacity, free = O2_CAPACITY_ML_PER_G * lungs.hb[:, None], K * (1.0 - lungs.fio2[:, None])
-    venous = np.maximum(0.98 * capacity - uptake[:, None], 0.2 * capacity)
-    starved = po2_from_so2(np.clip((venous + r * (pio2 - 45.0) / np.maximum(free, 1e-9)) / capacity, 0.3, 0.97))
-    x = np.log(np.maximum(pio2 - 1.2 * np.exp(y) - free * (capacity - venous) / r, starved))
-    ya = np.log(_mean(r * np.exp(y), weight) / _mean(r, weight))
-    z, za = (7.4 - 0.55 * (v - np.log(40.0)) + 0.015 * b for v, b in ((y, lungs.sbe[:, None]), (ya, lungs.sbe)))
-    artery = _State(np.full_like(ya, np.log(80.0)), ya, za)
-    nothing, level = np.zeros_like(ya), _whole_blood_level(lungs.hb, artery, np.ones_like(ya))
-    line = _columns(_whole_blood(lungs.hb, level))
-    unit = _State(x, y, np.minimum(z, 7.4 + line.level / line.slope))  # no CO2 left: nothing but fixed buffers
-    b = _blood(unit, lungs.hb[:, None], lungs.temperature[:, None], line)
-    capillary = _mean(b.o2, weight), _mean(b.co2, weight)
-    venous_o2, venous_co2, held = _venous_of_capillary(*capillary, uptake, output)
-    return _Solution(unit, artery, _Closing(*capillary, venous_o2, venous_co2, held), level, nothing > 0)
+def _start(problem: _Problem) -> tuple[_State, Array]:
+    """First guess of all points and of the level: CO2 before O2, each by one step of its own.
 
-
-def _newton(problem: _Problem, now: _Solution, steps: int) -> _Solution:
-    """Steps of Newton's method until all lungs of the block have settled, or ``steps`` of them."""
-    lungs = problem.lungs
-    hb, temperature = lungs.hb[:, None], lungs.temperature[:, None]
-    for _ in range(steps):
-        line = _whole_blood(lungs.hb, now.level)
-        a = _blood(now.artery, lungs.hb, lungs.temperature, line)
-        b = _blood(now.unit, hb, temperature, _columns(line))
-        unit, closing = _unit_step(problem, now.unit, b, now.closing)
-        artery = now.artery.towards(
-            a,
-            (1.0 - lungs.shunt) * closing.capillary_o2 + lungs.shunt * closing.venous_o2,
-            (1.0 - lungs.shunt) * closing.capillary_co2 + lungs.shunt * closing.venous_co2,
-        )
-        ph = ph_at_standard_base_excess(np.exp(artery.y), lungs.sbe)
-        level = _whole_blood_level(lungs.hb, artery._replace(z=ph), a.so2)
-        moved = np.maximum(_moved(unit, now.unit).max(axis=1), _moved(artery, now.artery))
-        settled = np.asarray((moved <= SETTLED) & (np.abs(level - now.level) <= LEVEL_SETTLED))
-        now = _Solution(unit, artery, closing, level, settled)
-        if settled.all():
-            break
-    return now
-
-
-def _moved(new: _State, old: _State) -> Array:
-    return np.maximum(np.abs(new.x - old.x), np.abs(new.y - old.y))
-
-
-def _rows(found: _Solution, kept: NDArray[np.bool_]) -> _Solution:
-    return _Solution(
-        _State(*(a[kept] for a in found.unit)),
-        _State(*(a[kept] for a in found.artery)),
-        found.closing.rows(kept),
-        found.level[kept],
-        found.settled[kept],
-    )
-
-
-def _merged(found: _Solution, rest: _Solution, late: NDArray[np.bool_]) -> _Solution:
-    """The solution with the late lungs' rows put in."""
-    for whole, part in zip(
-        (*found.unit, *found.artery, *found.closing, found.level, found.settled),
-        (*rest.unit, *rest.artery, *rest.closing, rest.level, rest.settled),
-        strict=True,
-    ):
-        whole[late] = part
-    return found
-
-
-def _columns(line: _Buffer) -> _Buffer:
-    """A buffer line a lung, as columns against units."""
-    return line._replace(slope=line.slope[:, None], deoxy=line.deoxy[:, None], level=line.level[:, None])
-
-
-def _unit_step(problem: _Problem, unit: _State, b: _Blood, before: _Closing) -> tuple[_State, _Closing]:
-    """One Newton step of all units and of both mixed venous contents.
-
-    A unit's step is a constant plus its answers to a step of the two venous contents; put into the closing equations
-    that leaves a 2 x 2 system a lung.
+    CO2 is first a gas of one solubility (farhi1967); then bicarbonate stands for its content, and the buffers
+    say which pH goes with it. O2 starts from what the gas of a unit can bring.
     """
-    lungs, r, weight, pio2, uptake, output = problem
-    fio2, venous_o2, venous_co2 = lungs.fio2[:, None], before.venous_o2, before.venous_co2
-    po2, pco2, free = np.exp(unit.x), np.exp(unit.y), K * (1.0 - fio2)
-    f1 = r * (pio2 - po2 - fio2 * pco2) - free * (b.o2 - venous_o2[:, None])
-    f2 = r * pco2 - K * (venous_co2[:, None] - b.co2)
-    a11, a12 = -r * po2 - free * b.o2_x, -r * fio2 * pco2 - free * b.o2_y
-    a21, a22 = K * b.co2_x, r * pco2 + K * b.co2_y
-    det = a11 * a22 - a12 * a21
-    alone = (-f1 * a22 + f2 * a12) / det, (-f2 * a11 + f1 * a21) / det
-    per_o2 = -free * a22 / det, free * a21 / det
-    per_co2 = -K * a12 / det, K * a11 / det
+    lungs, makeup, r, _, weight, _, _, output = problem
+    share = START_SOLUBILITY / (START_SOLUBILITY + r)
+    venous = K * output / _sum(r * share, weight)
+    artery = venous * ((1.0 - lungs.shunt) * _sum(share, weight) + lungs.shunt)
+    ph = ph_at_standard_base_excess(artery, lungs.sbe)
+    level = _level(np.log(artery), ph, np.full_like(ph, 0.95), makeup)
 
-    def mean(step: tuple[Array, Array]) -> tuple[Array, Array]:
-        dx, dy = step
-        return _mean(b.o2_x * dx + b.o2_y * dy, weight), _mean(b.co2_x * dx + b.co2_y * dy, weight)
+    here = makeup.hco3 * artery * np.exp(LN10 * (ph - 7.4))
+    line = here + makeup.buffer * (ph - 7.4)  # bicarbonate at pH 7.4
+    given_off = (lungs.vco2 - START_HALDANE * lungs.vo2 / (1.0 + r)) / (10.0 * lungs.output * START_CO2)
+    hco3 = here * (share * venous / artery) ** (makeup.buffer / (LN10 * here + makeup.buffer))
+    gas = r / (START_CO2 * K * makeup.hco3) * np.exp(LN10 / makeup.buffer * (hco3 - line))
+    excess = hco3 * (gas + 1.0) - np.maximum(here + given_off, 0.1 * here)
+    hco3 = hco3 - excess / (gas * (1.0 + LN10 / makeup.buffer * hco3) + 1.0)
+    z = 7.4 + (line - hco3) / makeup.buffer
+    y = np.log(hco3 / makeup.hco3) - LN10 * (z - 7.4)
+    y[ARTERY], z[ARTERY] = np.log(artery), ph
+    return _State(_start_of_o2(problem, np.exp(y), _shift(y, z, makeup)), y, z), level
 
-    (o, c), (oo, co), (oc, cc) = mean(alone), mean(per_o2), mean(per_co2)
-    capillary_o2, capillary_co2 = _mean(b.o2, weight) + o, _mean(b.co2, weight) + c
-    want_o2, want_co2, held = _venous_of_capillary(capillary_o2, capillary_co2, uptake, output)
-    left = np.where(held, 1.0 - MOST_EXTRACTED, 1.0)
-    g1, g2 = want_o2 - venous_o2, want_co2 - venous_co2
-    m11, m12, m21, m22 = 1.0 - left * oo, -left * oc, -co, 1.0 - cc
-    det = m11 * m22 - m12 * m21
-    do2, dco2 = (g1 * m22 - g2 * m12) / det, (g2 * m11 - g1 * m21) / det
-    dx, dy = (alone[i] + per_o2[i] * do2[:, None] + per_co2[i] * dco2[:, None] for i in (0, 1))
-    closing = _Closing(
-        capillary_o2 + oo * do2 + oc * dco2,
-        capillary_co2 + co * do2 + cc * dco2,
-        venous_o2 + do2,
-        venous_co2 + dco2,
-        held,
+
+def _start_of_o2(problem: _Problem, pco2: Array, shift: Array) -> Array:
+    """First guess of ln PO2: a Newton step of the units for O2 alone, then blood of the contents it gives."""
+    lungs, makeup, r, inspired, weight, nitrogen, uptake, _ = problem
+    capacity = makeup.capacity
+    venous = np.maximum(0.98 * capacity - uptake, 0.2 * capacity)
+    brought = inspired - lungs.fio2 * r * pco2
+    starved = po2_from_so2_mmhg(_within((venous + (brought - 45.0 * r) / nitrogen) / capacity, 0.3, 0.97))
+    x = np.fmax(np.log((brought - nitrogen * (capacity - venous)) / r), np.log(starved) - shift)
+    o2, o2_x = _o2(x, shift, capacity)
+    gas = r * np.exp(x)
+    stiff = gas + nitrogen * o2_x
+    alone, per_o2 = (brought - gas - nitrogen * o2) / stiff, nitrogen / stiff
+    capillary, back = _sum(o2 + o2_x * alone, weight), _sum(o2_x * per_o2, weight)
+    least = 1.0 - MOST_EXTRACTED
+    venous = np.maximum((capillary - uptake) / (1.0 - back), least * capillary / (1.0 - least * back))
+    x = x + _bounded(alone + per_o2 * venous, LARGEST_STEP)
+
+    mixed = (1.0 - lungs.shunt) * (capillary + back * venous) + lungs.shunt * venous
+    content = np.stack([venous, mixed])
+    shift = shift[VENOUS:]
+    carried = np.log(po2_from_so2_mmhg(_within(content / capacity, 0.05, 0.98))) - shift
+    ends = np.fmax(carried, np.log((content - capacity) / O2_SOLUBILITY_ML_PER_DL_MMHG))
+    for _ in range(2):
+        o2, o2_x = _o2(ends, shift, capacity)
+        ends = ends + _bounded((content - o2) / o2_x, LARGEST_STEP)
+    x[VENOUS:] = ends
+    return x
+
+
+def _o2(x: Array, shift: Array, capacity: Array) -> tuple[Array, Array]:
+    """O2 content at ln PO2 and a shift of the curve, and its slope."""
+    so2, steep = _saturation(x + shift)
+    free = O2_SOLUBILITY_ML_PER_DL_MMHG * np.exp(x)
+    return capacity * so2 + free, capacity * steep + free
+
+
+def _within(values: Array, low: float, high: float) -> Array:
+    return np.minimum(np.maximum(values, low), high)
+
+
+class _Step(NamedTuple):
+    """What one Newton step gives. A lung is ``held`` where VO2 was cut and ``lost`` where it ran away."""
+
+    state: _State
+    level: Array
+    held: Some
+    settled: Some
+    lost: Some
+
+
+def _step(problem: _Problem, now: _State, level: Array) -> _Step:
+    """One Newton step of all rows and of both mixed venous contents.
+
+    A row's step is linear in the O2 and CO2 that come with its blood. Put into the closing equations that
+    leaves a 2 x 2 system a lung for the venous contents; arterial blood then takes the mixed contents.
+    """
+    lungs, makeup, r, inspired, weight, nitrogen, uptake, output = problem
+    b = _blood(now, makeup, level)
+    gas_o2, gas_co2 = r * b.po2, r * b.pco2
+    made_room = lungs.fio2 * gas_co2
+    a11, a12 = gas_o2 + nitrogen * b.o2_x, made_room + nitrogen * b.o2_y
+    a21, a22 = K * b.co2_x, gas_co2 + K * b.co2_y
+    det = a11 * a22 - a12 * a21  # of a (dx, dy) = f + (nitrogen, K) x contents that come
+    x1, x2, y1, y2 = a22 / det, -a12 / det, -a21 / det, a11 / det
+    f1 = inspired - gas_o2 - made_room - nitrogen * b.o2
+    f2 = -gas_co2 - K * b.co2
+
+    o1, o2 = weight * (b.o2_x * x1 + b.o2_y * y1), weight * (b.o2_x * x2 + b.o2_y * y2)
+    c1, c2 = weight * (b.co2_x * x1 + b.co2_y * y1), weight * (b.co2_x * x2 + b.co2_y * y2)
+    o = _sum(b.o2, weight) + _sum(o1, f1) + _sum(o2, f2)  # end-capillary contents, were venous ones nothing
+    c = _sum(b.co2, weight) + _sum(c1, f1) + _sum(c2, f2)
+    oo, oc = nitrogen * o1.sum(axis=0), K * o2.sum(axis=0)  # and what venous ones add
+    co, cc = nitrogen * c1.sum(axis=0), K * c2.sum(axis=0)
+
+    def venous_o2(left: float, content: Array) -> Array:
+        """O2 content if it is ``content`` and ``left`` of what venous blood adds to end-capillary blood."""
+        across = left * oc
+        whole: Array = (1.0 - left * oo) * (1.0 - cc) - across * co
+        return (content * (1.0 - cc) + across * (c + output)) / whole
+
+    least = 1.0 - MOST_EXTRACTED
+    enough, cut = venous_o2(1.0, o - uptake), venous_o2(least, least * o)
+    vo2 = np.maximum(enough, cut)
+    vco2 = (c + output + co * vo2) / (1.0 - cc)
+    ao2, aco2 = (
+        (1.0 - lungs.shunt) * capillary + lungs.shunt * venous
+        for capillary, venous in ((o + oo * vo2 + oc * vco2, vo2), (c + co * vo2 + cc * vco2, vco2))
     )
-    return unit.step(b, dx, dy), closing
+    f1[:ARTERY] += nitrogen * vo2
+    f2[:ARTERY] += K * vco2
+    f1[ARTERY] += nitrogen * ao2
+    f2[ARTERY] += K * aco2
+    dx, dy = _bounded(f1 * x1 + f2 * x2, LARGEST_STEP), _bounded(f1 * y1 + f2 * y2, LARGEST_STEP)
+    dz = b.dph + b.ph_x * dx + b.ph_y * dy
+    new = _State(now.x + dx, now.y + dy, now.z + dz)
+
+    rise = b.so2_z[ARTERY] * b.dph[ARTERY] + b.so2_x[ARTERY] * dx[ARTERY] + b.so2_y[ARTERY] * dy[ARTERY]
+    so2 = _within(b.so2[ARTERY] + rise, 0.0, 1.0)
+    new_level = _level(new.y[ARTERY], _arterial_ph(new, lungs.sbe), so2, makeup)
+    moved = np.maximum(np.abs(dx), np.abs(dy)).max(axis=0)
+    settled = (moved <= SETTLED) & (np.abs(new_level - level) <= LEVEL_SETTLED)
+    return _Step(new, new_level, cut > enough, settled, np.isnan(moved))
 
 
-def _venous_of_capillary(
-    o2: Array, co2: Array, uptake: Array, output: Array
-) -> tuple[Array, Array, NDArray[np.bool_]]:
-    """Mixed venous contents that belong to mean end-capillary contents, and where O2 uptake had to be cut."""
-    least = (1.0 - MOST_EXTRACTED) * o2
-    held = np.asarray(o2 - uptake < least)
-    return np.where(held, least, o2 - uptake), co2 + output, held
+def _arterial_ph(state: _State, sbe: Array) -> Array:
+    """pH of arterial blood at its standard base excess: a Newton step from where it is."""
+    ph, pco2 = state.z[ARTERY], np.exp(state.y[ARTERY])
+    misfit = standard_base_excess_mmol_per_l(ph, pco2) - sbe
+    return np.asarray(ph - misfit / (LN10 * hco3_mmol_per_l(ph, pco2) + ECF_BUFFER))
 
 
-def _saturation_of_contents(found: _Solution, lungs: _Lungs, line: _Buffer) -> Array:
-    """Saturation of mixed venous blood from its contents."""
-    artery, closing = found.artery, found.closing
-    state = _State(np.full_like(artery.x, np.log(40.0)), artery.y + 0.1, artery.z - 0.03)
-    for _ in range(VENOUS_STEPS):
-        b = _blood(state, lungs.hb, lungs.temperature, line)
-        state = state.towards(b, closing.venous_o2, closing.venous_co2)
-    return _blood(state, lungs.hb, lungs.temperature, line).so2
+def _solve(lungs: _Lungs, units: int) -> tuple[NDArray[Any], ...]:
+    """Newton's method on one block of lungs; returns the fields of `Exchange` in order."""
+    problem = _laid_out(lungs, units)
+    (x, y, z), level, held, settled = _newton(problem)
+    ends = _State(x[VENOUS:], y[VENOUS:], z[VENOUS:])
+    svo2, sao2 = _blood(ends, problem.makeup, level).so2
+    vented = _sum(problem.r * np.exp(y), problem.weight) / _sum(problem.r, problem.weight)
+    known = (np.exp(x[ARTERY]), np.exp(y[ARTERY]), z[ARTERY], sao2, svo2, vented * (1.0 - lungs.dead))
+    return (*(np.where(settled, v, np.nan) for v in known), held & settled, settled)
+
+
+def _newton(problem: _Problem) -> tuple[_State, Array, Some, Some]:
+    """Points, level, where VO2 was cut, and which lungs settled; those that have not go on by themselves."""
+    state, level = _start(problem)
+    held, settled = np.zeros((2, level.size), dtype=bool)
+    rest, part, at, on = np.arange(level.size), problem, state, level
+    for steps in ROUNDS:
+        for _ in range(steps):
+            last = _step(part, at, on)
+            at, on = last.state, last.level
+            if (last.settled | last.lost).all():
+                break
+        news = (*at, on, last.held, last.settled)
+        for whole, new in zip((*state, level, held, settled), news, strict=True):
+            whole[..., rest] = new
+        late = ~(last.settled | last.lost)
+        if not late.any():
+            break
+        rest, part, at, on = rest[late], part.of(late), _State(*(a[:, late] for a in at)), on[late]
+    return state, level, held, settled
