@@ -496,8 +496,8 @@ def _step(problem: _Problem, now: _State, level: Array) -> _Step:
     def venous_o2(left: float, content: Array) -> Array:
         """O2 content if it is ``content`` and ``left`` of what venous blood adds to end-capillary blood."""
         across = left * oc
-        whole: Array = (1.0 - left * oo) * (1.0 - cc) - across * co
-        return (content * (1.0 - cc) + across * (c + output)) / whole
+        alone = (1.0 - left * oo) * (1.0 - cc) - across * co
+        return np.asarray((content * (1.0 - cc) + across * (c + output)) / alone)
 
     least = 1.0 - MOST_EXTRACTED
     enough, cut = venous_o2(1.0, o - uptake), venous_o2(least, least * o)
