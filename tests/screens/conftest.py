@@ -135,4 +135,6 @@ def app() -> AppTest:
 @pytest.fixture
 def html_of() -> Callable[[AppTest], str]:
     """All tables and words that the page writes itself, as one text."""
-    return lambda app: "\n".join(element.proto.body for element in app.get("html"))
+    return lambda app: "\n".join(
+        element.proto.body for element in app.get("html") if not element.proto.body.startswith("<style")
+    )

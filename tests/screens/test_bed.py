@@ -312,6 +312,6 @@ def test_the_page_stands_on_the_real_engine(app, html_of):
     bed = app.selectbox(key="patient").select(ICP).run(timeout=240)
     assert not bed.exception
     page = html_of(bed)
-    assert "Expected" in page and "Nearest" in page and "fb-intervals" in page
+    assert "Expected" in page and 'class="fb-nearest' in page and "No forecast" not in page
     lows = [float(low) for low in re.findall(r"<i>90 %</i> (\d+)–", page)]
     assert len(lows) == 3 and all(low > 0 for low in lows)  # PaCO2, PaO2, SaO2
