@@ -8,7 +8,8 @@ from engine.forecast import Forecast
 from engine.record import Target
 
 SHARES = (0.9, 0.5)  # outer band first, so that the inner one lies on top
-OPACITY = {0.9: 0.16, 0.5: 0.30}
+OPACITY = {0.9: 0.11, 0.5: 0.27}
+TARGET_OPACITY = 0.04
 
 
 def target_traces(target: Target | None, window: Window, units: Units) -> list[Trace]:
@@ -30,7 +31,7 @@ def target_traces(target: Target | None, window: Window, units: Units) -> list[T
             "y": scaled(corners_y, units),
             "line": {"color": "@target", "width": 2, "dash": "6px,3px"},
             "fill": "toself",
-            "fillcolor": "@target/0.05",
+            "fillcolor": f"@target/{TARGET_OPACITY}",
             "hoverinfo": "skip",
         },
         words(
@@ -58,10 +59,10 @@ def forecast_traces(forecast: Forecast | None, window: Window, units: Units) -> 
         traces += _expected(forecast, pao2.median, paco2.median, units)
     elif paco2 is not None:
         left = window.pao2[0] * 1.02
-        traces.append(words("PaO₂ not forecast", left, paco2.median, "middle right", "@forecast", units))
+        traces.append(words("PaO₂ not forecast", left, paco2.median, "middle right", "@ink", units))
     elif pao2 is not None:
         low = window.paco2[0]
-        traces.append(words("PaCO₂ not forecast", pao2.median, low, "top center", "@forecast", units))
+        traces.append(words("PaCO₂ not forecast", pao2.median, low, "top center", "@ink", units))
     return traces
 
 

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from dashboard.charts.band import OPACITY
+from dashboard.charts.band import OPACITY, TARGET_OPACITY
 from dashboard.wording import (
     FIELDS,
     PALETTES,
@@ -72,11 +72,23 @@ def test_text_stands_out_from_the_tint_of_the_expected_row(scheme, text):
     assert contrast(palette[text], tint) >= TEXT_CONTRAST
 
 
-@pytest.mark.parametrize("scheme", PALETTES)
-def test_times_stand_out_where_both_bands_lie_under_them(scheme):
+def under(scheme, *shares):
+    """The ground inside the target where these forecast bands lie over each other."""
     palette = PALETTES[scheme]
-    outer = laid_over(palette["paper"], palette["forecast"], OPACITY[0.9])
-    assert contrast(palette["ink"], laid_over(outer, palette["forecast"], OPACITY[0.5])) >= TEXT_CONTRAST
+    ground = laid_over(palette["paper"], palette["target"], TARGET_OPACITY)
+    for share in shares:
+        ground = laid_over(ground, palette["forecast"], OPACITY[share])
+    return ground
+
+
+@pytest.mark.parametrize("scheme", PALETTES)
+def test_clock_times_stand_out_on_both_bands(scheme):
+    assert contrast(PALETTES[scheme]["ink"], under(scheme, 0.9, 0.5)) >= TEXT_CONTRAST
+
+
+@pytest.mark.parametrize(("scheme", "text"), list(product(PALETTES, ("forecast", "target"))))
+def test_labels_of_band_and_target_stand_out_on_the_outer_band(scheme, text):
+    assert contrast(PALETTES[scheme][text], under(scheme, 0.9)) >= TEXT_CONTRAST
 
 
 def style_sheet() -> str:
