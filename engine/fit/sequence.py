@@ -85,7 +85,7 @@ def fit(case: Case, *, seed: int = 1, draws: int = DRAWS, read_as: str = "seen")
     fits = deque(fits_along(case, seed=seed, draws=draws, read_as=read_as), maxlen=1)
     if not fits:
         raise NothingToSay(_why_nothing(case))
-    return fits[0]
+    return up_to(fits[0], case)
 
 
 def _why_nothing(case: Case) -> str:
@@ -249,5 +249,5 @@ def _observed(case: Case, number: int, time: datetime) -> Observed:
 
 
 def up_to(fit: Fit, case: Case) -> Fit:
-    """The same belief, with later entries of the case charted but no later gas: what stood before a change."""
+    """The same belief with what was charted since its last gas, but no later gas: what stands before a change."""
     return replace(fit, case=case)

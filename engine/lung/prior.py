@@ -20,7 +20,7 @@ ln_vco2               ln 3.1 mL/kg (0.23)     220 (SD 50) mL/min (stapel2015, ka
 rq                    0.83 (0.05)             0.76-0.89 (rousing2016)
 ln_cardiac_output     ln 5.5 L/min (0.25)     common practice, no source; decides PaO2 near the knee
 standard_base_excess  first gas               mmol/L; the gas says it directly
-logit_defence         passive none            share of a change of ventilation that the patient takes back
+logit_defence         0.8 (1.0)               share of a change of ventilation that an active patient takes back
 ln_volatility         0 (0.35)                scale of all drift, personal
 ====================  ======================  ============================================================
 """
@@ -63,7 +63,7 @@ CENTRE = {
     "rq": 0.83,
     "ln_cardiac_output": np.log(5.5 / 66.0),  # per kg PBW
     "standard_base_excess": 0.0,
-    "logit_defence": 0.0,
+    "logit_defence": 0.8,
     "ln_volatility": 0.0,
 }
 WIDTH = {
