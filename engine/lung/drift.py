@@ -38,12 +38,12 @@ PASSIVE = {
     "ln_volatility": (0.0, 0.02),
 }
 ACTIVE = PASSIVE | {
-    "logit_shunt": (0.42, 0.06),
+    "logit_shunt": (0.45, 0.04),
     "ln_vq_log_sd": (0.05, 0.04),
     "logit_dead_space": (0.08, 0.02),
-    "ln_vco2": (0.085, 0.01),
+    "ln_vco2": (0.08, 0.005),
     "ln_cardiac_output": (0.08, 0.04),
-    "standard_base_excess": (1.3, 0.15),
+    "standard_base_excess": (1.2, 0.1),
     "logit_defence": (0.05, 0.05),
 }
 # Events widen the jump (SD on the parameter's own scale). Sizes: goligher2014 (PEEP: P/F change median 9.5, IQR -16

@@ -14,13 +14,14 @@ logit_shunt           logit 0.13 (0.9)        90 % within 3 and 40 %: intensive 
 ln_vq_log_sd          ln 0.9 (0.4)            healthy 0.36-0.47 (cardus1997), severe above 1.5 (memory)
 logit_dead_space      logit 0.40 (0.7)        VD/VT 0.58 (0.09) in early ARDS (nuckton2002) less the series part
 ln_series_ml          ln 1.42 mL/kg (0.25)    1.5 (SD 0.5) mL/kg PBW, synthesis of fletcher1984, kiiski1992,
-                                              haudebourg2022
+                                              haudebourg2022; the narrower SD by look-back over made patients
 apparatus_share       0.75 (0.12)             campbell2000, prat2003: 0.5 to 1.0 of the nominal volume
 ln_vco2               ln 3.1 mL/kg (0.23)     220 (SD 50) mL/min (stapel2015, kagan2018)
 rq                    0.83 (0.05)             0.76-0.89 (rousing2016)
 ln_cardiac_output     ln 5.5 L/min (0.25)     common practice, no source; decides PaO2 near the knee
 standard_base_excess  first gas               mmol/L; the gas says it directly
-logit_defence         0.8 (1.0)               share of a change of ventilation that an active patient takes back
+logit_defence         1.3 (1.0)               share of a change of charted ventilation that an active patient
+                                              takes back: by look-back over charted stays
 ln_volatility         0 (0.35)                scale of all drift, personal
 ====================  ======================  ============================================================
 """
@@ -63,7 +64,7 @@ CENTRE = {
     "rq": 0.83,
     "ln_cardiac_output": np.log(5.5 / 66.0),  # per kg PBW
     "standard_base_excess": 0.0,
-    "logit_defence": 0.8,
+    "logit_defence": 1.3,
     "ln_volatility": 0.0,
 }
 WIDTH = {
