@@ -1,14 +1,15 @@
 """Cases -> forecasts beside what was measured: how far these forecasts could be trusted.
 
-For every usable gas with an earlier one in its case: the forecast of that gas at its own time, as it stood when the
-last change between the two was made, from all entries strictly before that moment, and that change. Without a change:
-from all entries up to the earlier gas. A change in the gas's own entry counts as made just before it and settled, and no
-measured value of that entry is used. Nothing is refused here: where a screen would not forecast, the interval is wide.
+For every usable gas with an earlier one in its case: the forecast of that gas at its own time, as it stood
+when the last change between the two was made, from all entries strictly before that moment, and that change.
+Without a change: from all entries up to the earlier gas. A change in the gas's own entry counts as made just
+before it and settled, and no measured value of that entry is used. Nothing is refused here: where a screen
+would not forecast, the interval is wide.
 """
 
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from datetime import timedelta
 from pathlib import Path
 from typing import Any
@@ -17,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from engine.fit import Fit, NothingToSay, fits_along
-from engine.fit.sequence import settings_at
+from engine.fit.sequence import settings_at, up_to
 from engine.forecast import LEVELS, predict
 from engine.reading.case_file import BadCase, read_case, text_from_time
 from engine.record import Case, Entry
@@ -30,7 +31,7 @@ LOOKBACK_DRAWS = 1000
 
 @dataclass(frozen=True, slots=True)
 class Lookback:
-    """Rows in the order case, time, made_at, quantity, measured, q05 .. q95; and what was left out, with the reason."""
+    """Rows in the order case, time, made_at, quantity, measured, q05 .. q95; what was left out, and why."""
 
     rows: tuple[dict[str, Any], ...]
     left_out: tuple[tuple[str, str], ...]
@@ -102,7 +103,7 @@ def _rows_of_gas(case: Case, name: str, fit: Fit, number: int, seed: int) -> Ite
     known = case.before(fit.gas_number + 1 if change is None else change)
     tried, minutes = _tried(case, change, number)
     p = predict(
-        replace(fit, case=known),
+        up_to(fit, known),
         tried,
         hours=max((entry.gas_time - fit.gas_time) / timedelta(hours=1), 0.0),
         minutes=minutes,
@@ -123,7 +124,7 @@ def _rows_of_gas(case: Case, name: str, fit: Fit, number: int, seed: int) -> Ite
 
 
 def last_change(case: Case, earlier: int, number: int) -> int | None:
-    """The entry of the last change after the earlier gas's entry, up to the gas's own; ``None`` without one."""
+    """The entry of the last change after the earlier gas's entry, the gas's own included; ``None``: none."""
     for change in range(number, earlier, -1):
         if settings_at(case, change - 1).differing(settings_at(case, change)):
             return change
@@ -135,7 +136,9 @@ def _tried(case: Case, change: int | None, number: int) -> tuple[Entry, float | 
     if change is None:
         return Entry(time=case.entries[number].time), None
     made = case.entries[change]
-    tried = Entry(time=made.time, settings=made.settings, change_reason=made.change_reason, events=made.events)
+    tried = Entry(
+        time=made.time, settings=made.settings, change_reason=made.change_reason, events=made.events
+    )
     if change == number:
         return tried, None
     return tried, (case.entries[number].gas_time - made.time) / timedelta(minutes=1)

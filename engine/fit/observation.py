@@ -1,8 +1,8 @@
 """How probable a charted gas is under a belief: what a sample scatters about the state of the body.
 
-Scatter of consecutive samples in stable ventilated patients: CV 2.8-3.0 % of PaCO2, 3.6-5.1 % of PaO2, pH 0.02
-(thorson1983, hess1992), heavy-tailed here. Measured saturation, cardiac output, VO2, VCO2 and mixed venous saturation
-are used where given, with the scatter named beside each.
+Scatter of consecutive samples in stable ventilated patients: CV 2.8-3.0 % of PaCO2, 3.6-5.1 % of PaO2, pH
+0.02 (thorson1983, hess1992), heavy-tailed here. Measured saturation, cardiac output, VO2, VCO2 and mixed
+venous saturation are used where given, with the scatter named beside each.
 """
 
 from dataclasses import dataclass

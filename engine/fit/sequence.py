@@ -1,7 +1,7 @@
 """The belief about a lung, carried from gas to gas.
 
-Between two gases it drifts (`engine.lung.drift`); each gas narrows it (`engine.fit.tempering`). A new gas updates the
-draws and refits nothing. The same seed gives the same draws.
+Between two gases it drifts (`engine.lung.drift`); each gas narrows it (`engine.fit.tempering`). A new gas
+updates the draws and refits nothing. The same seed gives the same draws.
 """
 
 from collections import deque
@@ -29,9 +29,7 @@ Rows = NDArray[np.int64]
 
 DRAWS = 1000
 FIT_UNITS = 11  # V/Q nodes while fitting: within 0.02 % of PaO2 in the median lung, far below scatter
-SETTLED_AFTER = timedelta(
-    hours=2
-)  # 90 % of a PaCO2 change at an alveolar ventilation of 2.5 L/min takes 89 min
+SETTLED_AFTER = timedelta(hours=2)  # nine tenths of a PaCO2 change take 89 min at 2.5 L/min of ventilation
 NEARBY = timedelta(hours=1)  # a cardiac output, VO2, VCO2 or SvO2 this old still belongs to the gas
 STANDARD_WEIGHT_KG = 70.0
 
@@ -44,8 +42,8 @@ class NothingToSay(ValueError):
 class Fit:
     """The belief after the last usable gas of a case, and what a forecast needs beside it.
 
-    ``surprise`` is, for each gas so far, its log density under the belief before it; ``distinct`` the number of
-    ancestors left of the draws at the last gas.
+    ``surprise`` is, for each gas so far, its log density under the belief before it; ``distinct`` the number
+    of ancestors left of the draws at the last gas.
     """
 
     case: Case
@@ -213,7 +211,7 @@ def settings_at(case: Case, number: int) -> Settings:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Situation:
-    """Breathing when a gas was drawn; and, where a dated change lies too close, what it was before and how long ago."""
+    """Breathing when a gas was drawn; where a dated change lies close, what it was before and since when."""
 
     breathing: Breathing
     was: Breathing | None
@@ -249,5 +247,5 @@ def _observed(case: Case, number: int, time: datetime) -> Observed:
 
 
 def up_to(fit: Fit, case: Case) -> Fit:
-    """The same belief with what was charted since its last gas, but no later gas: what stands before a change."""
+    """The same belief with what was charted since its last gas, and no later gas."""
     return replace(fit, case=case)

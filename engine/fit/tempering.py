@@ -1,14 +1,16 @@
 """From belief before a gas to belief after it: tempered sequential Monte Carlo.
 
-Every draw is written as ``centre + width * e`` with standard normal ``e``, its own centre and width (where it came from
-and how far it may have moved). The likelihood is let in by steps, each as large as keeps half of the draws effective;
-after each step draws are resampled and moved by a Metropolis kernel that leaves the tempered posterior unchanged. The
-kernel is a Crank-Nicolson step towards the normal law that the draws themselves show, so it stays good in eleven dimensions.
+Every draw is written as ``centre + width * e`` with standard normal ``e``, its own centre and width (where
+it came from and how far it may have moved). The likelihood is let in by steps, each as large as keeps half
+of the draws effective; after each step draws are resampled and moved by a Metropolis kernel that leaves the
+tempered posterior unchanged. The kernel is a Crank-Nicolson step towards the normal law that the draws
+themselves show, so it stays good in eleven dimensions.
 
 References
 ----------
-delmoral2006 : P. Del Moral, A. Doucet, A. Jasra, "Sequential Monte Carlo samplers", J. R. Stat. Soc. B 68, 411-436, 2006.
-cotter2013 : S. L. Cotter, G. O. Roberts, A. M. Stuart, D. White, "MCMC methods for functions", Stat. Sci. 28, 424-446, 2013.
+delmoral2006 : P. Del Moral, A. Doucet, A. Jasra, "Sequential Monte Carlo samplers", J. R. Stat. Soc. B 68,
+411-436, 2006. cotter2013 : S. L. Cotter, G. O. Roberts, A. M. Stuart, D. White, "MCMC methods for
+functions", Stat. Sci. 28, 424-446, 2013.
 """
 
 from collections.abc import Callable
@@ -31,8 +33,8 @@ MOST_STEPS = 60
 class Tempered:
     """What tempering gives: the innovations, the row each draw descends from, and how it went.
 
-    ``log_evidence`` is the log density of the observation under the belief before it; ``distinct`` the number of
-    ancestors left; ``accepted`` the share of moves taken.
+    ``log_evidence`` is the log density of the observation under the belief before it; ``distinct`` the
+    number of ancestors left; ``accepted`` the share of moves taken.
     """
 
     innovations: Array

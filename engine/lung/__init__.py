@@ -1,8 +1,8 @@
-"""What is believed about one lung: its parameters, their priors with sources, how they drift, what gas they give.
+"""What is believed about one lung: its parameters, their priors, how they drift, what gas they give.
 
-`breathing` reads off the chart what drives gas exchange at one moment; `prior` says what is believed before the first
-gas; `drift` how far a lung may have moved between two moments; `arterial` which gas a belief gives under a breathing;
-`settling` a gas drawn before that one is reached.
+`breathing` reads off the chart what drives gas exchange at one moment; `prior` says what is believed before
+the first gas; `drift` how far a lung may have moved between two moments; `arterial` which gas a belief gives
+under a breathing; `settling` a gas drawn before that one is reached.
 
 References
 ----------

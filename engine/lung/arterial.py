@@ -1,8 +1,9 @@
 """Which arterial gas a belief gives under a breathing, once settled.
 
-Dead space has a series part, in mL a breath, and an alveolar part, a fraction of what passes it (fletcher1984,
-haudebourg2022). Below a tidal volume of about 1.5 times the series dead space the series
-part gives way (nunn1960: it shrinks with volumes under 350 mL), smoothly here, and no forecast is shown on a screen.
+Dead space has a series part, in mL a breath, and an alveolar part, a fraction of what passes it
+(fletcher1984, haudebourg2022). Below a tidal volume of about 1.5 times the series dead space the series part
+gives way (nunn1960: it shrinks with volumes under 350 mL), smoothly here, and no forecast is shown on a
+screen.
 """
 
 from dataclasses import dataclass
@@ -32,7 +33,7 @@ class Ventilation:
 
 
 def ventilation(belief: Belief, breathing: Breathing, *, effort_stops: bool = False) -> Ventilation:
-    """How each draw is ventilated: the larger of the set rate and the patient's own, series dead space taken off."""
+    """How each draw is ventilated: the larger of set and own rate, series dead space taken off."""
     rate = np.full(len(belief), breathing.set_rate_per_min)
     if not effort_stops:
         rate = np.maximum(rate, _own_rate(belief, breathing))
@@ -71,8 +72,8 @@ def arterial_gas(
     breathing : Breathing
         Now, or as tried.
     reference : Breathing
-        At the first gas: a patient who defends a PaCO2 takes back the share `Belief.defence` of what ventilation moved
-        since then.
+        At the first gas: a patient who defends a PaCO2 takes back the share `Belief.defence` of what
+        ventilation moved since then.
     hb_g_per_dl : float
         Haemoglobin that can carry oxygen.
     barometric_mmhg : float

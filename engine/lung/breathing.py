@@ -1,18 +1,16 @@
 """What drives gas exchange at one moment, read off the chart: volumes, rates, inspired oxygen, devices.
 
-A ventilator breathes at the larger of the set rate and the patient's own. A patient whose total rate stands above the
-set one triggers: their own rate is known and a change of the set rate below it does next to nothing. Where the two
-agree the own rate is somewhere below, and zero under paralysis (common practice, no source).
+A ventilator breathes at the larger of the set rate and the patient's own. A patient whose total rate stands
+above the set one triggers: their own rate is known and a change of the set rate below it does next to
+nothing. Where the two agree the own rate is somewhere below, and zero under paralysis (common practice, no
+source).
 """
 
 from dataclasses import dataclass
 from datetime import datetime, timedelta
 
-from engine.record import Case, Entry, Measured, Settings
+from engine.record import Case, Measured, Settings
 
-LATEST_WITHIN = timedelta(
-    hours=4
-)  # how long a measured value speaks for the present; then the last one is kept
 TRIGGERS_ABOVE_SET_PER_MIN = 1.0  # total above set by more than counting error: the patient triggers
 SUPPORTED_MODES = ("support", "other")
 
@@ -21,8 +19,9 @@ SUPPORTED_MODES = ("support", "other")
 class OwnRate:
     """What the chart says of the patient's own breathing rate.
 
-    ``per_min`` is the rate seen while triggering; else ``at_most_per_min`` is the highest it can be (the rate at which
-    set and total agreed, or the set rate where no total is charted); under paralysis both are 0.
+    ``per_min`` is the rate seen while triggering; else ``at_most_per_min`` is the highest it can be (the
+    rate at which set and total agreed, or the set rate where no total is charted); under paralysis both are
+    0.
     """
 
     per_min: float | None
@@ -52,8 +51,8 @@ class Breathing:
 def breathing_at(case: Case, settings: Settings) -> Breathing:
     """Breathing under ``settings`` at the end of ``case``, from all its entries.
 
-    ``settings`` may differ from those in force: that is how a change is tried. A tidal volume that the mode does not
-    set follows the inspiratory or support pressure in proportion (constant compliance).
+    ``settings`` may differ from those in force: that is how a change is tried. A tidal volume that the mode
+    does not set follows the inspiratory or support pressure in proportion (constant compliance).
     """
     in_force = last_settings(case)
     volume, charted = _tidal_volume(case, settings, in_force)
@@ -77,9 +76,7 @@ def last_settings(case: Case) -> Settings:
     return in_force
 
 
-EXCHANGER_ML = (
-    55.0  # nominal, where the volume is not charted: middle of trials' devices (campbell2000, prat2003)
-)
+EXCHANGER_ML = 55.0  # nominal, where not charted: middle of the devices of campbell2000 and prat2003
 
 
 def apparatus_dead_space_ml(settings: Settings) -> float:
@@ -89,24 +86,17 @@ def apparatus_dead_space_ml(settings: Settings) -> float:
     return EXCHANGER_ML if settings.humidifier == "exchanger" else 0.0
 
 
-def latest(case: Case, field: str, time: datetime, within: timedelta = LATEST_WITHIN) -> Entry | None:
-    """The last entry that measured ``field`` not longer ago than ``within``."""
+def measured_value(case: Case, field: str, time: datetime, within: timedelta) -> float | None:
+    """The last value of a measured field that is not older than ``within``; ``None`` where there is none."""
     for entry in reversed(case.entries):
-        if time - entry.time > within:
-            return None
-        if entry.measured is not None and getattr(entry.measured, field) is not None:
-            return entry
+        value = None if entry.measured is None else getattr(entry.measured, field)
+        if value is not None:
+            return value if time - entry.time <= within else None
     return None
 
 
-def measured_value(case: Case, field: str, time: datetime, within: timedelta = LATEST_WITHIN) -> float | None:
-    """The last value of a measured field not longer ago than ``within``."""
-    entry = latest(case, field, time, within)
-    return None if entry is None else getattr(entry.measured, field)
-
-
 def own_rate_of(case: Case) -> OwnRate:
-    """The patient's own rate as far as the chart tells, from the last total rate and the set rate it stood beside."""
+    """The patient's own rate as the chart tells it: the last total rate beside the set rate of its time."""
     if paralysed(case):
         return OwnRate(per_min=0.0, at_most_per_min=0.0, charted=True)
     found: tuple[Measured, Settings] | None = None

@@ -1,13 +1,15 @@
 """How far a lung may have moved between two moments, and what a charted change says about it.
 
-Each parameter moves by a normal step whose variance is ``jump^2 + rate^2 hours``, times the patient's volatility and a
-heavy tail shared by all parameters of a step. The sizes come from gases with nothing changed between them: in charted
-intensive-care stays PaCO2 then differs by 5.3 mmHg (SD), ln PaO2 by 0.28 and base excess by about 1 mmol/L over some
-three hours, in fully ventilated patients far less; hence two kinds. In charted stays that difference is no larger
-after six hours than after one, so an active patient's drift is nearly all jump.
+Each parameter moves by a normal step whose variance is ``jump^2 + rate^2 hours``, times the patient's
+volatility and a heavy tail shared by all parameters of a step. The sizes come from gases with nothing
+changed between them: in charted intensive-care stays PaCO2 then differs by 5.3 mmHg (SD), ln PaO2 by 0.28
+and base excess by about 1 mmol/L over some three hours, in fully ventilated patients far less; hence two
+kinds. In charted stays that difference is no larger after six hours than after one, so an active patient's
+drift is nearly all jump.
 
-Seeing is not doing: a CHARTED step of FiO2 is evidence, since oxygen is lowered because the lung got better. Read as
-``seen``, logit shunt moves with the step of FiO2 by `EVIDENCE`; read as ``done`` it does not move at all.
+Seeing is not doing: a CHARTED step of FiO2 is evidence, since oxygen is lowered because the lung got better.
+Read as ``seen``, logit shunt moves with the step of FiO2 by `EVIDENCE`; read as ``done`` it does not move at
+all.
 """
 
 from dataclasses import dataclass
@@ -46,8 +48,9 @@ ACTIVE = PASSIVE | {
     "standard_base_excess": (1.2, 0.1),
     "logit_defence": (0.05, 0.05),
 }
-# Events widen the jump (SD on the parameter's own scale). Sizes: goligher2014 (PEEP: P/F change median 9.5, IQR -16
-# to 47), maggiore2003 (suction: 0.5-1.5 L of lung volume lost), bell2022 (prone: P/F +19 %); others common practice.
+# Events widen the jump (SD on the parameter's own scale). Sizes: goligher2014 (PEEP: P/F change median 9.5,
+# IQR -16 to 47), maggiore2003 (suction: 0.5-1.5 L of lung volume lost), bell2022 (prone: P/F +19 %); others
+# common practice, no source.
 EVENT: dict[str, dict[str, float]] = {
     "peep_change": {"logit_shunt": 0.5, "ln_vq_log_sd": 0.1, "logit_dead_space": 0.15},
     "recruitment": {"logit_shunt": 0.6},
@@ -128,7 +131,7 @@ def _spread(sizes: dict[str, tuple[float, float]], hours: float) -> Array:
 
 
 def widened_by(before: Settings, after: Settings, events: tuple[str, ...]) -> list[dict[str, float]]:
-    """The widenings that an entry's events and settings bring; a changed PEEP counts once, charted as event or not."""
+    """What an entry's events and settings widen; a changed PEEP counts once, charted as event or not."""
     changed = before.differing(after)
     named = [e for e in events if e != "peep_change"]
     if "peep_cmh2o" in changed or "peep_change" in events:
@@ -140,7 +143,7 @@ def widened_by(before: Settings, after: Settings, events: tuple[str, ...]) -> li
 
 
 def charted_fio2_step(before: Settings, after: Settings, entry: Entry) -> float:
-    """The step of FiO2 that is news of the lung: charted for the patient, not for a procedure or a forecast."""
+    """The step of FiO2 that is news of the lung: made for the patient, not for a procedure or a forecast."""
     if before.fio2 is None or after.fio2 is None or entry.change_reason in ("procedure", "prompted"):
         return 0.0
     return after.fio2 - before.fio2

@@ -1,18 +1,19 @@
 """What is believed about a ventilated patient's lung before the first gas.
 
-A state is eleven numbers on scales where a normal distribution is a fair belief (`PARAMETERS`), and one of two kinds
-of patient: *passive* (the ventilator does the breathing, little moves between gases) and *active* (the patient takes
-part, defends a PaCO2 of their own, and everything moves more). The kind is not charted; the gases tell.
+A state is eleven numbers on scales where a normal distribution is a fair belief (`PARAMETERS`), and one of
+two kinds of patient: *passive* (the ventilator does the breathing, little moves between gases) and *active*
+(the patient takes part, defends a PaCO2 of their own, and everything moves more). The kind is not charted;
+the gases tell.
 
 Sources of the means and SDs (references: `engine.lung`):
 
 ====================  ======================  ============================================================
 parameter             mean (SD)               source
 ====================  ======================  ============================================================
-logit_shunt           logit 0.13 (0.9)        90 % within 3 and 40 %: intensive care, from none to severe ARDS;
+logit_shunt           logit 0.13 (0.9)        90 % within 3 and 40 %: intensive care, none to severe ARDS;
                                               common practice, no source
 ln_vq_log_sd          ln 0.9 (0.4)            healthy 0.36-0.47 (cardus1997), severe above 1.5 (memory)
-logit_dead_space      logit 0.40 (0.7)        VD/VT 0.58 (0.09) in early ARDS (nuckton2002) less the series part
+logit_dead_space      logit 0.40 (0.7)        VD/VT 0.58 (0.09) in early ARDS (nuckton2002) less series part
 ln_series_ml          ln 1.42 mL/kg (0.25)    1.5 (SD 0.5) mL/kg PBW, synthesis of fletcher1984, kiiski1992,
                                               haudebourg2022; the narrower SD by look-back over made patients
 apparatus_share       0.75 (0.12)             campbell2000, prat2003: 0.5 to 1.0 of the nominal volume
@@ -94,9 +95,10 @@ ACTIVE_IF_UNKNOWN = 0.7
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Belief:
-    """Draws of one lung: ``values`` (draws, parameters), and for each whether it belongs to an active patient.
+    """Draws of one lung: ``values`` (draws, parameters), and for each whether the patient is active.
 
-    ``own`` (draws,) is a fixed uniform number that places the patient's own rate where the chart gives only a bound.
+    ``own`` (draws,) is a fixed uniform number that places the patient's own rate where the chart gives only
+    a bound.
     """
 
     values: Array
@@ -153,7 +155,8 @@ def logistic(x: Array) -> Array:
 def prior_of(patient: Patient, breathing: Breathing, standard_base_excess_mmol_per_l: float) -> Prior:
     """The prior before the first gas of a patient who breathes like this.
 
-    ``standard_base_excess_mmol_per_l`` is that of the first gas: it is a measurement, and the prior is wide about it.
+    ``standard_base_excess_mmol_per_l`` is that of the first gas: it is a measurement, and the prior is wide
+    about it.
     """
     centre, width = dict(CENTRE), dict(WIDTH)
     for condition in patient.conditions:

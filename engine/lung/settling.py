@@ -1,7 +1,8 @@
 """A gas drawn before the body has settled: on its way from one steady state to another.
 
-PaCO2 follows three CO2 stores (`engine.physics.stores`), faster the larger the final alveolar ventilation; ln PaO2
-follows washing in and out of the lung, a personal time (cakar2001). pH belongs to PaCO2 at constant standard base excess.
+PaCO2 follows three CO2 stores (`engine.physics.stores`), faster the larger the final alveolar ventilation;
+ln PaO2 follows washing in and out of the lung, a personal time (cakar2001). pH belongs to PaCO2 at constant
+standard base excess.
 """
 
 from dataclasses import dataclass
