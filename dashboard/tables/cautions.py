@@ -4,7 +4,7 @@ from collections.abc import Sequence
 from datetime import datetime
 from html import escape
 
-from dashboard.wording import change_text, clock_after, clock_text, span_text
+from dashboard.wording import Units, change_text, clock_after, clock_text, sentence_text, span_text
 from engine.checks import Check
 from engine.forecast import Forecast
 
@@ -32,7 +32,7 @@ def note(says: str, *, good: bool = False) -> str:
     return f'<div class="fb-alert{" fb-good" if good else ""}" role="alert">{escape(says)}</div>'
 
 
-def recheck_lines(forecast: Forecast, now: datetime) -> str:
+def recheck_lines(forecast: Forecast, units: Units, now: datetime) -> str:
     """The two times to look again, counted from a change made now."""
     recheck, lines = forecast.recheck, []
     for minutes, what in (
@@ -47,19 +47,19 @@ def recheck_lines(forecast: Forecast, now: datetime) -> str:
     return (
         '<div class="fb-side fb-recheck">'
         f"<h3>Look again <small>if changed now, {clock_text(now, now)}</small></h3>"
-        f"{body}<p>{escape(recheck.reason)}</p></div>"
+        f"{body}<p>{escape(sentence_text(recheck.reason, units))}</p></div>"
     )
 
 
-def cautions_list(forecast: Forecast) -> str:
+def cautions_list(forecast: Forecast, units: Units) -> str:
     """Every caution of the forecast, in its own order."""
     if not forecast.cautions:
         return ""
-    lines = "".join(f"<li>{escape(text)}</li>" for text in forecast.cautions)
+    lines = "".join(f"<li>{escape(sentence_text(text, units))}</li>" for text in forecast.cautions)
     return f'<div class="fb-side fb-cautions"><h3>Cautions</h3><ul>{lines}</ul></div>'
 
 
-def checks_list(checks: Sequence[Check]) -> str:
+def checks_list(checks: Sequence[Check], units: Units) -> str:
     """The checks that are not passed, the latest of each kind first; the passed ones stay out of the way."""
     kinds: dict[str, list[Check]] = {}
     for check in reversed(checks):
@@ -67,10 +67,11 @@ def checks_list(checks: Sequence[Check]) -> str:
             kinds.setdefault(check.name, []).append(check)
     if not kinds:
         return ""
-    lines = "".join(f"<li>{_doubt(*found)}</li>" for found in kinds.values())
+    lines = "".join(f"<li>{_doubt(units, *found)}</li>" for found in kinds.values())
     return f'<div class="fb-side fb-checks"><h3>Doubtful in the chart</h3><ul>{lines}</ul></div>'
 
 
-def _doubt(latest: Check, *earlier: Check) -> str:
+def _doubt(units: Units, latest: Check, *earlier: Check) -> str:
     before = f" {len(earlier)} more like it before." if earlier else ""
-    return f"{escape(latest.says)}{before} <small>{escape(latest.source)}</small>"
+    says, source = (escape(sentence_text(text, units)) for text in (latest.says, latest.source))
+    return f"{says}{before} <small>{source}</small>"

@@ -5,7 +5,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from html import escape
 
-from dashboard.wording import LIMIT_LABELS, Units, chance_text
+from dashboard.wording import LIMIT_LABELS, Units, chance_text, sentence_text
 from engine.limits import Limit
 
 _NUMBERS = re.compile(r"\d+(?:\.\d+)?")
@@ -103,8 +103,8 @@ def _line(limit: Limit, units: Units) -> str:
         f"{_limit(limit, units)} ({limit.level})",
         _margin(limit, units),
         chance_text(limit.probability),
-        escape(limit.says),
-        escape(limit.source),
+        escape(sentence_text(limit.says, units)),
+        escape(sentence_text(limit.source, units)),
     )
     body = "".join(f"<td>{cell}</td>" for cell in cells)
     verdict = _verdict(limit)

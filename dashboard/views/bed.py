@@ -213,15 +213,15 @@ def _result(state: Bed, case: Case, forecast: Forecast | None, now: datetime) ->
     with beside:
         if forecast is not None:
             st.html(_limits_and_times(forecast, state, now))
-        _show(checks_list(cached.checks(case)))
+        _show(checks_list(cached.checks(case), state.units))
 
 
 def _limits_and_times(forecast: Forecast, state: Bed, now: datetime) -> str:
     return (
         nearest_limit(forecast.limits, state.units)
         + limits_at_a_glance(forecast.limits, state.units)
-        + recheck_lines(forecast, now)
-        + cautions_list(forecast)
+        + recheck_lines(forecast, state.units, now)
+        + cautions_list(forecast, state.units)
     )
 
 

@@ -5,6 +5,7 @@ unit of the house. Every label, unit, number of digits and colour is decided her
 """
 
 from dashboard.wording.colours import PALETTES, colour_variables
+from dashboard.wording.sentences import sentence_text
 from dashboard.wording.settings import (
     CHOICE_WORDS,
     FIELDS,
@@ -51,6 +52,7 @@ __all__ = [
     "field_label",
     "fields_to_try",
     "percent_text",
+    "sentence_text",
     "setting_text",
     "settings_text",
     "span_text",

@@ -216,6 +216,14 @@ def test_kpa_and_grams_per_litre_by_choice(own, html_of):
     assert points(own, "measured")[1][-1] == pytest.approx(7.066, abs=5e-4)  # 53 mmHg, three decimals
 
 
+def test_sentences_follow_the_unit_of_the_house(bed, html_of):
+    bed.selectbox(key="patient").set_value("demo:triggering").run()
+    assert "PaCO2 50 mmHg would mean" in html_of(bed)
+    bed.segmented_control(key="unit_gas").set_value("kPa").run()
+    page = html_of(bed)
+    assert "PaCO2 6.7 kPa would mean" in page and "mmHg" not in page
+
+
 # ---------------------------------------------------------------------------------------------------- uploads
 
 

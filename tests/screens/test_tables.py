@@ -209,27 +209,27 @@ def test_settings_age_counts_from_the_last_real_change(case, now):
 
 
 def test_two_times_to_look_again(forecast_of, now):
-    lines = words(recheck_lines(forecast_of(), now))
+    lines = words(recheck_lines(forecast_of(), Units(), now))
     assert "if changed now, 15:30" in lines and "15:40 early look" in lines and "16:25 settled gas" in lines
     silent = replace(
         forecast_of(), recheck=Recheck(early_minutes=None, settled_minutes=None, reason="No change.")
     )
-    assert words(recheck_lines(silent, now)) == "Look again if changed now, 15:30 No change."
+    assert words(recheck_lines(silent, Units(), now)) == "Look again if changed now, 15:30 No change."
 
 
 def test_cautions_stand_in_their_order(forecast_of):
-    said = words(cautions_list(forecast_of({"peep_cmh2o": 12.0})))
+    said = words(cautions_list(forecast_of({"peep_cmh2o": 12.0}), Units()))
     assert said.index("PaO2 is not forecast") < said.index("It is assumed")
-    assert cautions_list(replace(forecast_of(), cautions=())) == ""
+    assert cautions_list(replace(forecast_of(), cautions=()), Units()) == ""
 
 
 def test_only_doubtful_checks_are_shown():
     def check(name, ok):
         return Check(name=name, value=None, limit=None, ok=ok, says=f"{name} says", source="source2031")
 
-    shown = words(checks_list([check("good", True), check("doubt", False), check("unknown", None)]))
+    shown = words(checks_list([check("good", True), check("doubt", False), check("unknown", None)], Units()))
     assert "doubt says source2031" in shown and "good" not in shown and "unknown" not in shown
-    assert checks_list([check("good", True)]) == ""
+    assert checks_list([check("good", True)], Units()) == ""
 
 
 def test_repeated_doubts_are_told_once_the_latest_first():
@@ -237,7 +237,9 @@ def test_repeated_doubts_are_told_once_the_latest_first():
         return Check(name=name, value=None, limit=None, ok=False, says=says, source="source2031")
 
     shown = words(
-        checks_list([doubt("a", "first"), doubt("b", "other"), doubt("a", "second"), doubt("a", "third")])
+        checks_list(
+            [doubt("a", "first"), doubt("b", "other"), doubt("a", "second"), doubt("a", "third")], Units()
+        )
     )
     assert shown.startswith("Doubtful in the chart third 2 more like it before.")
     assert "other source2031" in shown and "first" not in shown and "second" not in shown
@@ -255,10 +257,11 @@ def test_nothing_typed_into_a_case_reaches_the_page_as_markup(case, forecast_of,
     pages = (
         who_line(bad, False, True, now),
         gases_table(bad, lambda n: (), Units(), now),
-        checks_list([check]),
-        cautions_list(replace(forecast_of(), cautions=(evil,))),
+        checks_list([check], Units()),
+        cautions_list(replace(forecast_of(), cautions=(evil,)), Units()),
         recheck_lines(
             replace(forecast_of(), recheck=Recheck(early_minutes=None, settled_minutes=None, reason=evil)),
+            Units(),
             now,
         ),
         nearest_limit([row], Units())
