@@ -46,15 +46,21 @@ def refusals(fit: Fit, p: Prediction, changed: Mapping[str, Any]) -> tuple[Refus
         return (Refusal(_ALL, NO_SUPPORT),)
     if any("extracorporeal_start" in e.events for e in fit.case.entries[fit.gas_number + 1 :]):
         return (Refusal(_ALL, SUPPORT_SINCE),)
-    if p.breathing.tidal_volume_ml < LEAST_VOLUME_OVER_SERIES * np.median(p.series_ml):
+    if p.breathing.tidal_volume_ml < LEAST_VOLUME_OVER_SERIES * _series_ml(p):
         return (Refusal(_ALL, _too_small_a_breath(p)),)
     if np.isfinite(p.settled.pao2_mmhg).mean() < LEAST_SOLVED:
         return (Refusal(_ALL, NO_STEADY_STATE),)
     return (Refusal(frozenset({"pao2_mmhg", "sao2"}), NO_PEEP),) if "peep_cmh2o" in changed else ()
 
 
+def _series_ml(p: Prediction) -> float:
+    """Median series dead space of a breath of usual size: what small breaths leave of it is the unknown."""
+    device_ml = p.belief.of("apparatus_share") * p.breathing.apparatus_dead_space_ml
+    return float(np.median(np.exp(p.belief.of("ln_series_ml")) + device_ml))
+
+
 def _too_small_a_breath(p: Prediction) -> str:
     return (
         f"Not forecast: a tidal volume of {p.breathing.tidal_volume_ml:.0f} mL is less than 1.5 times the "
-        f"series dead space (about {np.median(p.series_ml):.0f} mL), and what it clears is not known."
+        f"series dead space (about {_series_ml(p):.0f} mL), and what it clears is not known."
     )
