@@ -191,7 +191,9 @@ def test_lognormal_rows_in_air(table):
     np.testing.assert_allclose(gas.pao2_mmhg, rows["pao2_mmhg"], rtol=0, atol=PAO2_MMHG)
     np.testing.assert_allclose(gas.paco2_mmhg, rows["paco2_mmhg"], rtol=0, atol=PACO2_MMHG)
     np.testing.assert_allclose(behind, rows["alveolar_arterial_po2_mmhg"], rtol=0, atol=PAO2_MMHG)
-    np.testing.assert_allclose(gap, rows["arterial_alveolar_pco2_mmhg"], rtol=0, atol=PACO2_MMHG + PACO2_MMHG)
+    whole = rows["vq_log_sd"] < WHOLE_ROWS_TO_SD  # at 1.5 itself the cut tail makes 0.2 mmHg of the gap
+    wanted = rows["arterial_alveolar_pco2_mmhg"]
+    np.testing.assert_allclose(gap[whole], wanted[whole], rtol=0, atol=PACO2_MMHG)
 
 
 def test_lognormal_rows_on_oxygen(table):
