@@ -51,7 +51,6 @@ class Prediction:
     state: Gas
     sample: Gas
     rate_per_min: Array
-    series_ml: Array
     alveolar_l_per_min: Array
 
 
@@ -143,7 +142,6 @@ def predict(
         state,
         _sample(state, scatter),
         given.rate_per_min,
-        given.series_ml,
         given.alveolar_l_per_min,
     )
 
