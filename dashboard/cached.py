@@ -43,7 +43,7 @@ def checks(case: Case) -> tuple[Check, ...]:
     return checks_for(case)
 
 
-@st.cache_resource(scope="session", max_entries=64, show_spinner=False, hash_funcs=_BY_TEXT)
-def estimates(case: Case, number: int) -> tuple[Estimate, ...]:
-    """`engine.estimates.estimates_for`."""
-    return estimates_for(case, number)
+@st.cache_resource(scope="session", max_entries=8, show_spinner=False, hash_funcs=_BY_TEXT)
+def estimates(case: Case) -> dict[int, tuple[Estimate, ...]]:
+    """`engine.estimates.estimates_for` of every gas, by the number of its entry."""
+    return {number: estimates_for(case, number) for number, entry in enumerate(case.entries) if entry.gas}

@@ -4,6 +4,7 @@ import gc
 import logging
 from collections.abc import AsyncIterator
 from contextlib import asynccontextmanager
+from importlib import import_module
 from pathlib import Path
 from typing import Any
 
@@ -73,9 +74,13 @@ async def _lifespan(app: st.App) -> AsyncIterator[dict[str, Any]]:
 def _warm() -> None:
     """Load everything before the first visitor, then take it out of the collector's sight.
 
-    The screen library collects garbage after every run and would walk all loaded modules each time.
+    The screen library collects garbage after every run and would walk all loaded modules each time. Two of
+    them it loads itself, at the first run.
     """
     from dashboard.views import bed  # noqa: F401  (imported for its imports)
+
+    for late in ("pandas", "pyarrow"):
+        import_module(late)
 
     gc.collect()
     gc.freeze()

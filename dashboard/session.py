@@ -53,6 +53,7 @@ class Bed:
     patients: dict[str, Held] = field(default_factory=dict)
     chosen: str | None = None
     read: str | None = None
+    charted: Settings = field(default_factory=Settings)
     tried: dict[str, object] = field(default_factory=dict)
     effort_stops: bool = False
     earlier: list[tuple[dict[str, object], bool]] = field(default_factory=list)
@@ -158,6 +159,7 @@ def upload_key() -> str:
 def _take(key: str) -> None:
     state = bed()
     state.chosen, state.read, state.upload_says = key, None, None
+    state.charted = ([Settings()] + [s for _, s in state.patients[key].case.entries_with_settings()])[-1]
     state.tried, state.effort_stops, state.earlier, state.refused = {}, False, [], {}
     st.session_state["patient"] = key
     _rewrite_fields()
@@ -168,9 +170,7 @@ def _take(key: str) -> None:
 
 def charted() -> Settings:
     """The settings in force after the last entry of the patient in hand."""
-    held = bed().in_hand
-    entries = list(held.case.entries_with_settings()) if held else []
-    return entries[-1][1] if entries else Settings()
+    return bed().charted
 
 
 def in_use(name: str) -> Any:

@@ -1,6 +1,6 @@
 """The gases so far, one line each, with the settings they were drawn on."""
 
-from collections.abc import Callable, Sequence
+from collections.abc import Mapping, Sequence
 from datetime import datetime
 from html import escape
 
@@ -8,13 +8,14 @@ from dashboard.wording import Units, clock_text, percent_text, settings_text
 from engine.estimates import Estimate
 from engine.record import Case, Entry, Settings
 
-Estimates = Callable[[int], Sequence[Estimate]]
+Estimates = Mapping[int, Sequence[Estimate]]
 
 
 def gases_table(case: Case, estimates: Estimates, units: Units, now: datetime) -> str:
     """Every gas of the case in order, unusable ones marked with the reason.
 
-    ``estimates`` gives the textbook numbers of the gas in an entry; P/F and base excess are taken from there.
+    ``estimates`` holds the textbook numbers of the gases by the number of their entry; P/F and base excess
+    are taken from there.
     """
     heads: tuple[str, ...] = ("", "Drawn", "pH", f"PaCO₂ {units.gas}", f"PaO₂ {units.gas}", "SaO₂ %")
     heads += (
@@ -29,7 +30,7 @@ def gases_table(case: Case, estimates: Estimates, units: Units, now: datetime) -
     lines: list[str] = []
     for number, (entry, settings) in enumerate(case.entries_with_settings()):
         if entry.gas is not None:
-            cells = _cells(entry, settings, {e.name: e for e in estimates(number)}, units)
+            cells = _cells(entry, settings, {e.name: e for e in estimates.get(number, ())}, units)
             lines.append(_line(len(lines) + 1, entry, cells, settings, number in usable, now))
     head = "".join(f'<th scope="col">{text}</th>' for text in heads)
     return f'<table class="fb-gases"><thead><tr>{head}</tr></thead><tbody>{"".join(lines)}</tbody></table>'

@@ -2,6 +2,7 @@
 
 from contextlib import suppress
 from datetime import datetime
+from typing import NamedTuple
 
 import streamlit as st
 from streamlit.delta_generator import DeltaGenerator
@@ -40,7 +41,7 @@ PICTURE_HEIGHT_PX = 470
 
 def show() -> None:
     """One patient, one change, one forecast."""
-    state, now = session.bed(), session.moment()
+    state = session.bed()
     st.html(f'<div class="fb-safety">{SAFETY}</div>')
     with st.container(key="top", horizontal=True, vertical_alignment="center"):
         _who()
@@ -49,34 +50,57 @@ def show() -> None:
     if held is None:
         _upload_note(state)
         st.html(note("No patient in hand. Choose a demo patient or open a case file above.", good=True))
-        return
-    page, unread = st.container(), session.is_unread()
-    trial, result = page.columns([27, 100], gap="medium")
-    above, below = _place(result, unread), _place(page, unread)
-    with trial, st.container(key="trial"):
-        _trial(state)
-        busy = st.empty()
-    if unread:
-        _first_look(state, held.case, now, above, below)
+    elif session.is_unread():
+        _first_look(state, held.case, session.moment())
         session.mark_read()
         st.rerun()
-    with busy:
+    else:
+        _patient()
+
+
+class _Rooms(NamedTuple):
+    """Where things stand, whatever the order they are written in."""
+
+    trial: DeltaGenerator
+    busy: DeltaGenerator
+    above: DeltaGenerator
+    below: DeltaGenerator
+
+
+def _rooms(*, cleared: bool) -> _Rooms:
+    """The page below its top; for a fresh patient ``cleared`` of what stood there of the one before."""
+    page = st.container()
+    trial, result = page.columns([27, 100], gap="medium")
+    above, below = (place.empty().container() if cleared else place.container() for place in (result, page))
+    with trial, st.container(key="trial"):
+        return _Rooms(st.container(), st.empty(), above, below)
+
+
+@st.fragment
+def _patient() -> None:
+    """All that follows a change; the top of the page stays as it is.
+
+    What is forecast is sent before the fields, so that the picture need not wait for them and no field shows
+    a number before its forecast stands beside it.
+    """
+    state, now = session.bed(), session.moment()
+    held = state.in_hand
+    assert held is not None
+    rooms = _rooms(cleared=False)
+    with rooms.busy:
         answer = _forecast(state, held.case, now)
     forecast = answer if isinstance(answer, Forecast) else None
-    with above:
+    with rooms.above:
         _upload_note(state)
         if isinstance(answer, str):
             st.html(note(answer))
         _result(state, held.case, forecast, now)
-    with below:
+    with rooms.trial:
+        _trial(state)
+    with rooms.below:
         _gases(state, held.case, now)
         if forecast is not None:
             st.html('<h2 class="fb-heading">Limits</h2>' + limits_table(forecast.limits, state.units))
-
-
-def _place(where: DeltaGenerator, fresh: bool) -> DeltaGenerator:
-    """Room for what concerns one patient; a fresh one first loses what stood there of the one before."""
-    return where.empty().container() if fresh else where.container()
 
 
 # -------------------------------------------------------------------------------------------- top of the page
@@ -186,18 +210,17 @@ def _number(state: Bed, field: Field) -> None:
 # ------------------------------------------------------------------------------------------------- the result
 
 
-def _first_look(state: Bed, case: Case, now: datetime, above: DeltaGenerator, below: DeltaGenerator) -> None:
+def _first_look(state: Bed, case: Case, now: datetime) -> None:
     """What is measured stands at once; the lung behind it takes some seconds."""
-    with below:
+    rooms, gases = _rooms(cleared=True), len(case.usable_gases())
+    with rooms.trial:
+        _trial(state)
+    with rooms.below:
         _gases(state, case, now)
-    with above:
+    words = f"Reading {gases} gases of this stay: some seconds at the first look at a patient."
+    with rooms.above:
         _upload_note(state)
-        gases = len(case.usable_gases())
-        words = f"Reading {gases} gases of this stay: some seconds at the first look at a patient."
-        with (
-            st.spinner(words, show_time=True),
-            suppress(NothingToSay),
-        ):  # no gas: said where a forecast would stand
+        with st.spinner(words, show_time=True), suppress(NothingToSay):  # said where a forecast would stand
             _picture(state, case, None, now)
             cached.fitted(case)
 
@@ -235,7 +258,7 @@ def _picture(state: Bed, case: Case, forecast: Forecast | None, now: datetime) -
 
 
 def _gases(state: Bed, case: Case, now: datetime) -> None:
-    table = gases_table(case, lambda number: cached.estimates(case, number), state.units, now)
+    table = gases_table(case, cached.estimates(case), state.units, now)
     st.html(
         '<h2 class="fb-heading">Gases so far</h2>'
         f'<p class="fb-note">Clock times in {zone_text(now.tzinfo, now)}.</p>{table}'

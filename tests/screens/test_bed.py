@@ -239,9 +239,12 @@ def test_a_good_file_comes_to_hand(bed, case, html_of):
     ("text", "words"),
     [
         ("{", "case.json"),
-        ('{"format": "forebreath-case-1", "label": "Bed 7", "entries": [], "name": "x"}', "name"),
         (
-            '{"format": "forebreath-case-1", "label": "Bed 7", "entries":'
+            '{"format": "forebreath-case-1", "label": "Bed 7", "patient": {}, "site": {}, "entries": [], "name": "x"}',
+            "name",
+        ),
+        (
+            '{"format": "forebreath-case-1", "label": "Bed 7", "patient": {}, "site": {}, "entries":'
             ' [{"time": "2031-03-04T07:40:00Z", "settings": {"fio2": 40}}]}',
             "fio2",
         ),

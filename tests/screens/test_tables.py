@@ -158,7 +158,8 @@ def test_the_glance_leaves_out_the_nearest_and_the_unknown(make_limit):
 
 
 def test_gases_so_far_with_textbook_numbers_and_the_settings_then(case, now):
-    head, *lines = rows(gases_table(case, lambda n: estimates_for(case, n), Units(), now))
+    found = {number: estimates_for(case, number) for number, entry in enumerate(case.entries) if entry.gas}
+    head, *lines = rows(gases_table(case, found, Units(), now))
     assert len(lines) == 4 and len(head) == len(lines[0])
     last = dict(zip(head, lines[-1], strict=True))
     assert (last["Drawn"], last["pH"], last["PaCO₂ mmHg"], last["PaO₂ mmHg"]) == ("15:10", "7.31", "53", "74")
@@ -169,12 +170,12 @@ def test_gases_so_far_with_textbook_numbers_and_the_settings_then(case, now):
 
 
 def test_a_gas_that_is_not_used_says_why(case, now):
-    lines = rows(gases_table(case, lambda n: (), Units(), now))
+    lines = rows(gases_table(case, {}, Units(), now))
     assert lines[3][-1].startswith("not used: venous")
 
 
 def test_house_units_in_the_gas_table(case, now):
-    head, first, *_ = rows(gases_table(case, lambda n: (), Units("kPa", "g/L"), now))
+    head, first, *_ = rows(gases_table(case, {}, Units("kPa", "g/L"), now))
     line = dict(zip(head, first, strict=True))
     assert line["PaCO₂ kPa"] == "8.3" and line["Hb g/L"] == "98"
 
@@ -256,7 +257,7 @@ def test_nothing_typed_into_a_case_reaches_the_page_as_markup(case, forecast_of,
     row = make_limit(evil, 1.0, evil + "4-8", True, says=evil, source=evil, unit=evil)
     pages = (
         who_line(bad, False, True, now),
-        gases_table(bad, lambda n: (), Units(), now),
+        gases_table(bad, {}, Units(), now),
         checks_list([check], Units()),
         cautions_list(replace(forecast_of(), cautions=(evil,)), Units()),
         recheck_lines(
