@@ -2,6 +2,11 @@
 
 Between two gases it drifts (`engine.lung.drift`); each gas narrows it (`engine.fit.tempering`). A new gas
 updates the draws and refits nothing. The same seed gives the same draws.
+
+References
+----------
+liu2001 : J. Liu, M. West, "Combined parameter and state estimation in simulation-based filtering", in
+    "Sequential Monte Carlo Methods in Practice", Springer, 197-223, 2001.
 """
 
 from collections import deque
@@ -13,7 +18,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from engine.fit.observation import Observed, carrying_hb_g_per_dl, gas_at_37
-from engine.fit.tempering import Tempered, temper
+from engine.fit.tempering import Unexplained, temper
+from engine.fit.underway import underway_at
 from engine.lung.arterial import arterial_gas, ventilation
 from engine.lung.breathing import Breathing, breathing_at, measured_value
 from engine.lung.drift import READ_AS, drift_between, heavy_tail
@@ -29,7 +35,7 @@ Rows = NDArray[np.int64]
 
 DRAWS = 1000
 FIT_UNITS = 11  # V/Q nodes while fitting: within 0.02 % of PaO2 in the median lung, far below scatter
-SETTLED_AFTER = timedelta(hours=2)  # nine tenths of a PaCO2 change take 89 min at 2.5 L/min of ventilation
+SMOOTHING = 0.15  # share of the posterior SD that each draw is moved by before it drifts
 NEARBY = timedelta(hours=1)  # a cardiac output, VO2, VCO2 or SvO2 this old still belongs to the gas
 STANDARD_WEIGHT_KG = 70.0
 
@@ -95,6 +101,14 @@ def _why_nothing(case: Case) -> str:
     )
 
 
+def _no_lung(observed: Observed, hb: float, time: datetime) -> str:
+    return (
+        f"no lung explains the gas of {time:%Y-%m-%d %H:%M} (pH {observed.ph:.2f}, PaCO2 "
+        f"{observed.paco2_mmhg:.0f} and PaO2 {observed.pao2_mmhg:.0f} mmHg, {hb:.1f} g/dL of haemoglobin "
+        "that carries oxygen): check it, or exclude it with the reason"
+    )
+
+
 def barometric_mmhg(site: Site) -> float:
     """Station pressure where measured, else by altitude, else 760."""
     if site.barometric_mmhg is not None:
@@ -130,13 +144,13 @@ def _after_gas(
         carrying_hb_g_per_dl(gas),
         barometric_mmhg(case.site),
     )
-    situation = _situation(case, number, time)
+    breathing = breathing_at(case, _settings_of_gas(case, number))
+    underway = underway_at(case, time)
+    reference = breathing if last is None else last.reference
     if last is None:
-        reference = situation.breathing
         excess = float(standard_base_excess_mmol_per_l(observed.ph, observed.paco2_mmhg))
-        before, centre, width = _from_prior(prior_of(case.patient, reference, excess), rng, draws)
+        before, centre, width = _from_prior(prior_of(case.patient, breathing, excess), rng, draws)
     else:
-        reference = last.reference
         before, centre, width = _from_last(last, case, number, time, rng, read_as)
     weight_kg = case.patient.weight_kg or STANDARD_WEIGHT_KG
     obstructive = "obstructive" in case.patient.conditions
@@ -152,22 +166,26 @@ def _after_gas(
 
     def log_likelihood(e: Array, rows: Rows) -> Array:
         belief = drawn(e, rows)
-        exchange = give(belief, situation.breathing)
-        if situation.was is None:
+        exchange = give(belief, breathing)
+        if underway is None:
             return observed.log_likelihood(belief, settled_gas(exchange), exchange)
-        was = give(belief, situation.was)
         unsettled = gas_on_the_way(
             belief,
-            was,
+            give(belief, breathing_at(case, underway.before)),
             exchange,
-            situation.minutes,
-            alveolar_l_per_min=ventilation(belief, situation.breathing).alveolar_l_per_min,
+            underway.minutes,
+            alveolar_l_per_min=ventilation(belief, breathing).alveolar_l_per_min,
             weight_kg=weight_kg,
             obstructive=obstructive,
         )
         return observed.log_likelihood(belief, unsettled, exchange)
 
-    found: Tempered = temper(log_likelihood, draws, len(PARAMETERS), rng)
+    try:
+        found = temper(log_likelihood, draws, len(PARAMETERS), rng)
+    except Unexplained:
+        if last is not None:  # begin anew: what was believed is no help with this gas
+            return _after_gas(case, number, None, rng, seed, draws, read_as)
+        raise NothingToSay(_no_lung(observed, hb, time)) from None
     return Fit(
         case=case,
         seed=seed,
@@ -195,10 +213,27 @@ def _from_last(
 ) -> tuple[Belief, Array, Array]:
     since = case.entries[last.gas_number + 1 : number + 1]
     hours = max((time - last.gas_time) / timedelta(hours=1), 0.0)
-    in_force = settings_at(case, last.gas_number)
-    tail = heavy_tail(rng, len(last.belief))
-    drift = drift_between(last.belief, since, in_force, hours, tail, read_as=read_as)
-    return last.belief, last.belief.values + drift.shift, drift.sd
+    in_force, start = settings_at(case, last.gas_number), _smoothed(last.belief, rng)
+    tail = heavy_tail(rng, len(start))
+    drift = drift_between(start, since, in_force, hours, tail, read_as=read_as)
+    return start, start.values + drift.shift, drift.sd
+
+
+def _smoothed(belief: Belief, rng: np.random.Generator) -> Belief:
+    """The draws of each kind redrawn from a normal kernel that keeps their mean and covariance (liu2001).
+
+    What hardly drifts would else descend from ever fewer of the first draws.
+    """
+    values = belief.values.copy()
+    for kind in (True, False):
+        rows = np.flatnonzero(belief.active == kind)
+        if len(rows) > values.shape[1]:
+            centre = values[rows].mean(axis=0)
+            noise = rng.multivariate_normal(
+                np.zeros(len(centre)), np.cov(values[rows], rowvar=False), len(rows)
+            )
+            values[rows] = centre + np.sqrt(1.0 - SMOOTHING**2) * (values[rows] - centre) + SMOOTHING * noise
+    return Belief(values, belief.active, belief.own)
 
 
 def settings_at(case: Case, number: int) -> Settings:
@@ -209,30 +244,21 @@ def settings_at(case: Case, number: int) -> Settings:
     return in_force
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class _Situation:
-    """Breathing when a gas was drawn; where a dated change lies close, what it was before and since when."""
+def _settings_of_gas(case: Case, number: int) -> Settings:
+    """Settings in force when the gas of entry ``number`` was drawn, which may be before it was charted.
 
-    breathing: Breathing
-    was: Breathing | None
-    minutes: float
-
-
-def _situation(case: Case, number: int, time: datetime) -> _Situation:
-    """A change that first appears with the gas has no date of its own and is taken as settled."""
-    breathing = breathing_at(case, settings_at(case, number))
-    for change in range(number - 1, 0, -1):
-        entry = case.entries[change]
-        if time - entry.time > SETTLED_AFTER or entry.gas is not None:
-            break
-        was, now = settings_at(case, change - 1), settings_at(case, change)
-        if was.rate_per_min is not None and was.fio2 is not None and was.differing(now):
-            return _Situation(
-                breathing=breathing,
-                was=breathing_at(case, was),
-                minutes=(time - entry.time) / timedelta(minutes=1),
-            )
-    return _Situation(breathing=breathing, was=None, minutes=np.inf)
+    Where those then in force do not yet make a breath, the ones charted with the gas are all that is known.
+    """
+    charted, time = settings_at(case, number), case.entries[number].gas_time
+    drawn = max((n for n in range(number + 1) if case.entries[n].time <= time), default=number)
+    then = settings_at(case, drawn)
+    complete = None not in (
+        then.mode,
+        then.rate_per_min,
+        then.fio2,
+        then.tidal_volume_ml or charted.tidal_volume_ml,
+    )
+    return then if complete else charted
 
 
 def _observed(case: Case, number: int, time: datetime) -> Observed:

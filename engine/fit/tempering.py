@@ -29,6 +29,10 @@ ACCEPTANCE = 0.35  # the stride grows above it and shrinks below
 MOST_STEPS = 60
 
 
+class Unexplained(FloatingPointError):
+    """No draw of the belief can explain the observation at all."""
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Tempered:
     """What tempering gives: the innovations, the row each draw descends from, and how it went.
@@ -58,13 +62,13 @@ def temper(
 
     Raises
     ------
-    FloatingPointError
+    Unexplained
         If no draw can explain the observation at all.
     """
     e, rows = rng.standard_normal((draws, dimensions)), np.arange(draws)
     level = log_likelihood(e, rows)
     if not np.isfinite(level).any():
-        raise FloatingPointError("no draw of the belief explains the observation")
+        raise Unexplained("no draw of the belief explains the observation")
     power, evidence, stride, taken, tried = 0.0, 0.0, FIRST_STRIDE, 0.0, 0
     for _ in range(MOST_STEPS):
         step = _step(level, 1.0 - power)

@@ -6,8 +6,8 @@ import numpy as np
 
 from engine.checks.moment import SETTING_WORDS
 from engine.fit import Fit
+from engine.fit.underway import underway_at
 from engine.forecast.predict import Prediction
-from engine.forecast.underway import underway_at
 from engine.lung.prior import logistic
 from engine.physics.acid_base import ph_at_standard_base_excess
 from engine.physics.oxygen import so2_in_blood

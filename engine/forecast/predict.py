@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from engine.fit import Fit
 from engine.fit.observation import PACO2_CV, PAO2_CV, PH_SD, SAO2_SD, TAIL
 from engine.fit.sequence import STANDARD_WEIGHT_KG, settings_at
-from engine.forecast.underway import Underway, underway_at
+from engine.fit.underway import Underway, underway_at
 from engine.lung import (
     Belief,
     Breathing,

@@ -20,6 +20,7 @@ Array = NDArray[np.float64]
 LARGEST_SERIES_SHARE = 0.75  # of a breath: above it some alveolar ventilation persists (briscoe1954)
 WIDEST_VQ_LOG_SD = 2.5  # drift in a heavy tail stops here: no lung is wider (severe is 1.5 and more)
 OWN_RATE_SPREAD = 0.05  # ln SD of a patient's own rate about the one charted
+UNCHARTED_RATE = (12.0, 32.0)  # of a patient without set breaths and without a charted total; common practice
 OWN_RATE_LEAST = 0.6  # an active patient who does not trigger breathes at this share of the set rate, or more
 
 
@@ -49,6 +50,8 @@ def _own_rate(belief: Belief, breathing: Breathing) -> Array:
     own, spread = breathing.own_rate, np.exp(OWN_RATE_SPREAD * 2.0 * (belief.own - 0.5))
     if own.per_min is not None:
         return own.per_min * spread
+    if own.at_most_per_min == 0.0 and not own.charted:
+        return UNCHARTED_RATE[0] + (UNCHARTED_RATE[1] - UNCHARTED_RATE[0]) * belief.own
     return np.where(
         belief.active, own.at_most_per_min * (OWN_RATE_LEAST + (1.0 - OWN_RATE_LEAST) * belief.own), 0.0
     )

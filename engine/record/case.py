@@ -1,12 +1,14 @@
 """One patient's stay, whole: entries in order, each gas with the settings it was drawn under."""
 
 from collections.abc import Iterator
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from datetime import datetime
 from typing import Self
 
 from engine.record.guard import Impossible
 from engine.record.parts import Entry, Patient, Settings, Site, Target
+
+NOBODY_KNOWN, NOWHERE_KNOWN = Patient(), Site()  # nothing charted of the patient, or of the place
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -14,8 +16,8 @@ class Case:
     """One patient's stay: who, where, the target, and entries in strictly rising time."""
 
     label: str
-    patient: Patient = field(default_factory=Patient)
-    site: Site = field(default_factory=Site)
+    patient: Patient = NOBODY_KNOWN
+    site: Site = NOWHERE_KNOWN
     target: Target | None = None
     entries: tuple[Entry, ...] = ()
 

@@ -168,7 +168,7 @@ WANTED_CHECKS = {
     "triggering": {"Total rate against set rate", "Chronic hypercapnia"},
     "raised_icp": {"Minutes since a change"},
     "metabolic_acidosis": {"Total rate against set rate"},
-    "carbon_monoxide": {"Carboxyhaemoglobin", "FiO2 left standing"},
+    "carbon_monoxide": {"Carboxyhaemoglobin"},
 }
 
 

@@ -89,11 +89,6 @@ def test_the_same_gas_hours_after_the_change_is_read_as_settled(slowed):
     )
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="a second gas after the same change is taken as settled, since a gas stands between them: the end "
-    "point comes out at 47 mmHg, not 45",
-)
 def test_a_series_of_early_gases_is_read_as_one_course(slowed):
     assert end_point(on_the_way(slowed, 5.0, 30.0)) == pytest.approx(END_POINT_MMHG, abs=WITHIN_SCATTER)
 
@@ -109,11 +104,6 @@ def test_an_undated_change_is_not_taken_as_known(slowed):
     assert low < END_POINT_MMHG
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="a sample drawn before a change and charted after it is read under the settings after it, with "
-    "minutes below zero: its surprise is -80 where -3 is usual",
-)
 def test_a_sample_drawn_before_a_change_belongs_to_the_settings_before(slowed):
     fitted = fit(on_the_way(slowed, drawn_before=10.0), draws=DRAWS, read_as="done")
     assert fitted.surprise[-1] > -10.0
