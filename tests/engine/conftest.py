@@ -1,19 +1,24 @@
-"""Made patients: lungs whose numbers are known, and the stays in which they would be seen.
+"""Made patients: lungs whose numbers are known, the stays in which they would be seen, and short charts.
 
-A gas here is the steady state of a known lung (`engine.physics.exchange`), with no scatter unless a generator
-is given; so an answer of fit or forecast can be held against the truth.
+A gas of a known lung is its steady state (`engine.physics.exchange`), with no scatter unless a generator is
+given; so an answer of fit or forecast can be held against the truth. The charts further down are for what
+needs no lung, checks, estimates and limits: one ordinary patient each, of which a test changes what it asks
+about.
 """
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import UTC, datetime, timedelta
 from typing import Any
 
 import numpy as np
 import pytest
 
+from engine.checks import Check, checks_for
+from engine.estimates import Estimate, estimates_for
+from engine.limits import Limit, Mechanics, limits_for
 from engine.physics.exchange import Exchange, steady_state
-from engine.record import BloodGas, Case, Entry, Measured, Patient, Settings, Site
+from engine.record import BloodGas, Case, Entry, Measured, Patient, Settings, Site, Target
 
 START = datetime(2031, 3, 4, 7, 0, tzinfo=UTC)
 SCATTER_PACO2_CV, SCATTER_PAO2_CV, SCATTER_PH = 0.015, 0.025, 0.006  # half of what samples of a patient show
@@ -116,3 +121,149 @@ def known_lung() -> Callable[..., KnownLung]:
 def known_stay() -> Callable[..., Stay]:
     """`Stay`."""
     return Stay
+
+
+Fields = dict[str, object]
+CHART_START = datetime(2031, 3, 4, 7, 40, tzinfo=UTC)
+
+# A chart of two hours, for the checks
+
+CHART_SETTINGS = {
+    "mode": "volume",
+    "rate_per_min": 16,
+    "tidal_volume_ml": 430,
+    "fio2": 0.4,
+    "peep_cmh2o": 8,
+    "inspiratory_time_s": 1.0,
+}
+CHART_GAS = {"ph": 7.36, "paco2_mmhg": 44, "pao2_mmhg": 82, "hb_g_per_dl": 12.5}
+CHART_PATIENT = {"sex": "male", "height_cm": 178}
+
+
+def entry(minutes: float, **parts: object) -> Entry:
+    """An entry so many minutes after the start; settings, measured and gas as plain fields."""
+    kinds = {"settings": Settings, "measured": Measured, "gas": BloodGas}
+    made = {name: kinds[name](**value) if name in kinds else value for name, value in parts.items()}
+    return Entry(time=CHART_START + timedelta(minutes=minutes), **made)
+
+
+def chart(
+    *between: Entry,
+    settings: Fields | None = None,
+    measured: Fields | None = None,
+    gas: Fields | None = None,
+    patient: Fields | None = None,
+    site: Fields | None = None,
+    target: Fields | None = None,
+    **last: object,
+) -> Case:
+    """A case with settings at 07:40 and a gas with readings at 09:40, and entries between."""
+    parts = {"gas": CHART_GAS | (gas or {})} | ({"measured": measured} if measured else {}) | last
+    return Case(
+        label="Bed 7",
+        patient=Patient(**(CHART_PATIENT | (patient or {}))),
+        site=Site(**({"barometric_mmhg": 752} if site is None else site)),
+        target=Target(**target) if target else None,
+        entries=(entry(0, settings=CHART_SETTINGS | (settings or {})), *between, entry(120, **parts)),
+    )
+
+
+def rows(case: Case, name: str) -> list[Check]:
+    return [check for check in checks_for(case) if check.name == name]
+
+
+def row(case: Case, name: str) -> Check:
+    """The last row of that name."""
+    found = rows(case, name)
+    assert found, f"no row {name!r}"
+    return found[-1]
+
+
+def earlier_gas(**gas: object) -> Entry:
+    return entry(60, gas=CHART_GAS | gas)
+
+
+# One gas, for the estimates
+
+ONE_GAS_SETTINGS: Fields = {
+    "mode": "volume",
+    "rate_per_min": 20,
+    "tidal_volume_ml": 500,
+    "fio2": 0.4,
+    "peep_cmh2o": 10,
+}
+ONE_GAS: Fields = {"ph": 7.40, "paco2_mmhg": 40, "pao2_mmhg": 80, "hb_g_per_dl": 14}
+
+
+def case_of(
+    *,
+    settings: Fields | None = None,
+    measured: Fields | None = None,
+    gas: Fields | None = None,
+    patient: Fields | None = None,
+    site: Fields | None = None,
+    then: Entry | None = None,
+) -> Case:
+    """One entry with a gas, and perhaps another after it."""
+    first = Entry(
+        time=CHART_START,
+        settings=Settings(**(ONE_GAS_SETTINGS | (settings or {}))),
+        measured=Measured(**measured) if measured else None,
+        gas=BloodGas(**(ONE_GAS | (gas or {}))),
+    )
+    return Case(
+        label="Bed 7",
+        patient=Patient(**(patient or {"sex": "male", "height_cm": 178})),
+        site=Site(**(site or {"barometric_mmhg": 760})),
+        entries=(first,) if then is None else (first, then),
+    )
+
+
+def find_estimate(name: str, number: int = 0, **parts: object) -> Estimate:
+    case = case_of(**parts)
+    return next(e for e in estimates_for(case, number) if e.name == name)
+
+
+def estimated(name: str, **parts: object) -> float:
+    found = find_estimate(name, **parts).value
+    assert found is not None
+    return found
+
+
+# A chest and what is tried on it, for the limits
+
+MAN_OF_70_KG = Patient(sex="male", height_cm=(60 + 20 / 2.3) * 2.54)
+TRIED = Settings(
+    mode="volume", rate_per_min=18, tidal_volume_ml=420, fio2=0.5, peep_cmh2o=10, inspiratory_time_s=1.0
+)
+CHEST = Mechanics(
+    measured_at=CHART_START,
+    mode="volume",
+    tidal_volume_ml=420,
+    plateau_cmh2o=24,
+    peak_cmh2o=30,
+    peep_cmh2o=10,
+    set_peep_cmh2o=10,
+    flow_l_per_min=25.2,  # 420 mL in a second
+    inspiratory_time_s=1.0,
+    passive=True,
+    why="",
+)
+
+
+def find_limit(
+    name: str,
+    *,
+    patient: Patient = MAN_OF_70_KG,
+    tried: Settings = TRIED,
+    chest: Mechanics = CHEST,
+    **forecast: object,
+) -> Limit:
+    """The row of that name, the forecast quantities given by their own names."""
+    rows = [row for row in limits_for(patient, tried, chest, **forecast) if row.name == name]
+    assert len(rows) == 1, f"{len(rows)} rows {name!r}"
+    return rows[0]
+
+
+def with_condition(condition: str) -> dict[str, object]:
+    return {"patient": replace(MAN_OF_70_KG, conditions=(condition,))}

@@ -1,71 +1,16 @@
 """What the checks say to the patients a good answer must fit, and to slips of the chart."""
 
-from datetime import UTC, datetime, timedelta
+from datetime import timedelta
 from pathlib import Path
 
 import pytest
 
-from engine.checks import Check, checks_for
 from engine.reading.case_file import read_case
-from engine.record import Baseline, BloodGas, Case, Entry, Measured, Patient, Settings, Site
+from engine.record import Baseline
+from tests.engine.conftest import CHART_START as START
+from tests.engine.conftest import chart, earlier_gas, entry, row, rows
 
 REAL = Path(__file__).parents[2] / ".." / "shared" / "cases" / "real"
-
-START = datetime(2031, 3, 4, 7, 40, tzinfo=UTC)
-SETTINGS = {
-    "mode": "volume",
-    "rate_per_min": 16,
-    "tidal_volume_ml": 430,
-    "fio2": 0.4,
-    "peep_cmh2o": 8,
-    "inspiratory_time_s": 1.0,
-}
-GAS = {"ph": 7.36, "paco2_mmhg": 44, "pao2_mmhg": 82, "hb_g_per_dl": 12.5}
-PATIENT = {"sex": "male", "height_cm": 178}
-
-Fields = dict[str, object]
-
-
-def entry(minutes: float, **parts: object) -> Entry:
-    """An entry so many minutes after the start; settings, measured and gas as plain fields."""
-    kinds = {"settings": Settings, "measured": Measured, "gas": BloodGas}
-    made = {name: kinds[name](**value) if name in kinds else value for name, value in parts.items()}
-    return Entry(time=START + timedelta(minutes=minutes), **made)
-
-
-def chart(
-    *between: Entry,
-    settings: Fields | None = None,
-    measured: Fields | None = None,
-    gas: Fields | None = None,
-    patient: Fields | None = None,
-    site: Fields | None = None,
-    **last: object,
-) -> Case:
-    """A case with settings at 07:40 and a gas with readings at 09:40, and entries between."""
-    parts = {"gas": GAS | (gas or {})} | ({"measured": measured} if measured else {}) | last
-    return Case(
-        label="Bed 7",
-        patient=Patient(**(PATIENT | (patient or {}))),
-        site=Site(**({"barometric_mmhg": 752} if site is None else site)),
-        entries=(entry(0, settings=SETTINGS | (settings or {})), *between, entry(120, **parts)),
-    )
-
-
-def rows(case: Case, name: str) -> list[Check]:
-    return [check for check in checks_for(case) if check.name == name]
-
-
-def row(case: Case, name: str) -> Check:
-    """The last row of that name."""
-    found = rows(case, name)
-    assert found, f"no row {name!r}"
-    return found[-1]
-
-
-def earlier_gas(**gas: object) -> Entry:
-    return entry(60, gas=GAS | gas)
-
 
 PRESSURE = {"mode": "pressure", "inspiratory_pressure_cmh2o": 14}
 SLIP = chart(

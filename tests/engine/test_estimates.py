@@ -1,65 +1,22 @@
 """Textbook numbers against worked examples; the source stands beside each."""
 
-from datetime import UTC, datetime, timedelta
+from datetime import timedelta
 
 import pytest
 
-from engine.estimates import ESTIMATES, Estimate, estimates_for
-from engine.record import BloodGas, Case, Entry, Measured, Patient, Settings, Site
+from engine.estimates import ESTIMATES, estimates_for
+from engine.record import Entry
+from tests.engine.conftest import CHART_START as START
+from tests.engine.conftest import Fields, case_of
+from tests.engine.conftest import estimated as value
+from tests.engine.conftest import find_estimate as find
 
-START = datetime(2031, 3, 4, 7, 40, tzinfo=UTC)
 PRINTED_WHOLE = 0.5  # the example is printed without decimals
 PRINTED_TENTH = 0.051  # printed to one decimal
 PRINTED_HUNDREDTH = 0.0051  # printed to two decimals
 TENTH_OF_A_PERCENT = 0.0005  # a fraction printed to a tenth of a per cent
 GRID = 0.001  # of shunt: the grid prints PaO2 to 0.1 mmHg
 ROUNDED_CONSTANT = 0.002  # the example works with 0.86 for 0.863
-
-Fields = dict[str, object]
-SETTINGS: Fields = {
-    "mode": "volume",
-    "rate_per_min": 20,
-    "tidal_volume_ml": 500,
-    "fio2": 0.4,
-    "peep_cmh2o": 10,
-}
-GAS: Fields = {"ph": 7.40, "paco2_mmhg": 40, "pao2_mmhg": 80, "hb_g_per_dl": 14}
-
-
-def case_of(
-    *,
-    settings: Fields | None = None,
-    measured: Fields | None = None,
-    gas: Fields | None = None,
-    patient: Fields | None = None,
-    site: Fields | None = None,
-    then: Entry | None = None,
-) -> Case:
-    """One entry with a gas, and perhaps another after it."""
-    first = Entry(
-        time=START,
-        settings=Settings(**(SETTINGS | (settings or {}))),
-        measured=Measured(**measured) if measured else None,
-        gas=BloodGas(**(GAS | (gas or {}))),
-    )
-    return Case(
-        label="Bed 7",
-        patient=Patient(**(patient or {"sex": "male", "height_cm": 178})),
-        site=Site(**(site or {"barometric_mmhg": 760})),
-        entries=(first,) if then is None else (first, then),
-    )
-
-
-def find(name: str, number: int = 0, **parts: object) -> Estimate:
-    case = case_of(**parts)
-    return next(e for e in estimates_for(case, number) if e.name == name)
-
-
-def value(name: str, **parts: object) -> float:
-    found = find(name, **parts).value
-    assert found is not None
-    return found
-
 
 # Oxygenation
 

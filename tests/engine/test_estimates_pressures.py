@@ -1,56 +1,18 @@
 """Driving pressure, compliance and power against worked examples, and refused where they mean nothing."""
 
-from datetime import UTC, datetime, timedelta
+from datetime import timedelta
 
 import pytest
 
-from engine.estimates import Estimate, estimates_for
 from engine.estimates.chest import mechanics_of
-from engine.record import BloodGas, Case, Entry, Measured, Settings
+from engine.record import BloodGas, Case, Entry, Settings
+from tests.engine.conftest import CHART_START as START
+from tests.engine.conftest import ONE_GAS as GAS
+from tests.engine.conftest import Fields, case_of
+from tests.engine.conftest import estimated as value
+from tests.engine.conftest import find_estimate as find
 
-START = datetime(2031, 3, 4, 7, 40, tzinfo=UTC)
 POWER = 0.02  # J/min: the examples round 0.0980665 to 0.098
-
-Fields = dict[str, object]
-SETTINGS: Fields = {
-    "mode": "volume",
-    "rate_per_min": 20,
-    "tidal_volume_ml": 500,
-    "fio2": 0.4,
-    "peep_cmh2o": 10,
-}
-GAS: Fields = {"ph": 7.40, "paco2_mmhg": 40, "pao2_mmhg": 80, "hb_g_per_dl": 14}
-
-
-def case_of(
-    *,
-    settings: Fields | None = None,
-    measured: Fields | None = None,
-    then: Entry | None = None,
-) -> Case:
-    """One entry with a gas, and perhaps another after it."""
-    first = Entry(
-        time=START,
-        settings=Settings(**(SETTINGS | (settings or {}))),
-        measured=Measured(**measured) if measured else None,
-        gas=BloodGas(**GAS),
-    )
-    return Case(
-        label="Bed 7",
-        entries=(first,) if then is None else (first, then),
-    )
-
-
-def find(name: str, number: int = 0, **parts: object) -> Estimate:
-    case = case_of(**parts)
-    return next(e for e in estimates_for(case, number) if e.name == name)
-
-
-def value(name: str, **parts: object) -> float:
-    found = find(name, **parts).value
-    assert found is not None
-    return found
-
 
 PASSIVE: Fields = {"plateau_cmh2o": 25, "peak_cmh2o": 30, "total_rate_per_min": 20}
 

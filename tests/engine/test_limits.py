@@ -1,55 +1,21 @@
 """Every limit on each side, unmeasured, and never a set value outside a hard limit called ok."""
 
 from dataclasses import replace
-from datetime import UTC, datetime
 
 import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from engine.limits import TABLE, Limit, Mechanics, limits_for
-from engine.record import Patient, Settings
-
-MAN_OF_70_KG = Patient(sex="male", height_cm=(60 + 20 / 2.3) * 2.54)
-SETTINGS = Settings(
-    mode="volume", rate_per_min=18, tidal_volume_ml=420, fio2=0.5, peep_cmh2o=10, inspiratory_time_s=1.0
-)
-CHEST = Mechanics(
-    measured_at=datetime(2031, 3, 4, 7, 40, tzinfo=UTC),
-    mode="volume",
-    tidal_volume_ml=420,
-    plateau_cmh2o=24,
-    peak_cmh2o=30,
-    peep_cmh2o=10,
-    set_peep_cmh2o=10,
-    flow_l_per_min=25.2,  # 420 mL in a second
-    inspiratory_time_s=1.0,
-    passive=True,
-    why="",
-)
-
-
-def find(
-    name: str,
-    *,
-    patient: Patient = MAN_OF_70_KG,
-    tried: Settings = SETTINGS,
-    chest: Mechanics = CHEST,
-    **forecast: object,
-) -> Limit:
-    """The row of that name, the forecast quantities given by their own names."""
-    rows = [row for row in limits_for(patient, tried, chest, **forecast) if row.name == name]
-    assert len(rows) == 1, f"{len(rows)} rows {name!r}"
-    return rows[0]
+from engine.limits import TABLE, Mechanics, limits_for
+from engine.record import Patient
+from tests.engine.conftest import CHEST, MAN_OF_70_KG, with_condition
+from tests.engine.conftest import TRIED as SETTINGS
+from tests.engine.conftest import find_limit as find
 
 
 def with_settings(**changed: object) -> dict[str, object]:
     return {"tried": replace(SETTINGS, **changed)}
-
-
-def with_condition(condition: str) -> dict[str, object]:
-    return {"patient": replace(MAN_OF_70_KG, conditions=(condition,))}
 
 
 def with_plateau(plateau: float) -> dict[str, object]:

@@ -6,49 +6,15 @@ from datetime import UTC, datetime, timedelta
 import numpy as np
 import pytest
 
-from engine.limits import Limit, Mechanics, limits_for, mechanics_of
+from engine.limits import Mechanics, mechanics_of
 from engine.record import Case, Entry, Measured, Patient, Settings
+from tests.engine.conftest import CHEST, with_condition
+from tests.engine.conftest import TRIED as SETTINGS
+from tests.engine.conftest import find_limit as find
 
 MEDIAN_OF_DRAWS = 0.05  # cmH2O: the median of 2,000 draws with a spread of 1.7
 POWER = 0.02  # J/min: the example rounds 0.0980665 to 0.098
 TIME_S = 0.1  # of a median of 2,000 draws, and of ranges given to one decimal
-
-MAN_OF_70_KG = Patient(sex="male", height_cm=(60 + 20 / 2.3) * 2.54)
-SETTINGS = Settings(
-    mode="volume", rate_per_min=18, tidal_volume_ml=420, fio2=0.5, peep_cmh2o=10, inspiratory_time_s=1.0
-)
-CHEST = Mechanics(
-    measured_at=datetime(2031, 3, 4, 7, 40, tzinfo=UTC),
-    mode="volume",
-    tidal_volume_ml=420,
-    plateau_cmh2o=24,
-    peak_cmh2o=30,
-    peep_cmh2o=10,
-    set_peep_cmh2o=10,
-    flow_l_per_min=25.2,  # 420 mL in a second
-    inspiratory_time_s=1.0,
-    passive=True,
-    why="",
-)
-
-
-def find(
-    name: str,
-    *,
-    patient: Patient = MAN_OF_70_KG,
-    tried: Settings = SETTINGS,
-    chest: Mechanics = CHEST,
-    **forecast: object,
-) -> Limit:
-    """The row of that name, the forecast quantities given by their own names."""
-    rows = [row for row in limits_for(patient, tried, chest, **forecast) if row.name == name]
-    assert len(rows) == 1, f"{len(rows)} rows {name!r}"
-    return rows[0]
-
-
-def with_condition(condition: str) -> dict[str, object]:
-    return {"patient": replace(MAN_OF_70_KG, conditions=(condition,))}
-
 
 # Pressures after a change
 
