@@ -240,7 +240,8 @@ def test_a_good_file_comes_to_hand(bed, case, html_of):
     [
         ("{", "case.json"),
         (
-            '{"format": "forebreath-case-1", "label": "Bed 7", "patient": {}, "site": {}, "entries": [], "name": "x"}',
+            '{"format": "forebreath-case-1", "label": "Bed 7", "patient": {}, "site": {},'
+            ' "entries": [], "name": "x"}',
             "name",
         ),
         (
