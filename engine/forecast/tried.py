@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from engine import __version__
 from engine.fit import Fit
+from engine.fit.observation import gas_at_37
 from engine.forecast.cautions import cautions_of
 from engine.forecast.predict import predict
 from engine.forecast.recheck import recheck_of
@@ -23,6 +24,7 @@ from engine.record import Entry, Impossible, Settings, Target
 Array = NDArray[np.float64]
 
 SETTLED_HOURS = 1.0  # drift counted in a settled forecast
+LONGEST_WAIT = timedelta(days=30)  # after the last entry: later, a time is a slip
 HARM = {"pao2_below_55": 55.0, "ph_below_7_15": 7.15, "ph_above_7_55": 7.55}  # ARDS Network; common practice
 
 
@@ -59,10 +61,12 @@ def forecast(
     at = at or max(fit.case.entries[-1].time, fit.gas_time)
     if at < fit.gas_time:
         raise Impossible("at", at.isoformat(), f"a time not before the last gas, {fit.gas_time.isoformat()}")
+    if at - fit.case.entries[-1].time > LONGEST_WAIT:
+        raise Impossible("at", at.isoformat(), f"a time within {LONGEST_WAIT.days} days of the last entry")
     if minutes is not None and not 0.0 <= minutes <= 24 * 60:
         raise Impossible("minutes", minutes, "a number from 0 to 1440")
     before = last_settings(fit.case)
-    asked = _asked(change, before)
+    asked = settings_asked(change, before)
     settings = before.then(asked)
     changed = {n: (getattr(before, n), v) for n, v in settings.given().items() if getattr(before, n) != v}
     hours = (at - fit.gas_time) / timedelta(hours=1) + (SETTLED_HOURS if minutes is None else minutes / 60.0)
@@ -107,7 +111,7 @@ def forecast(
     )
 
 
-def _asked(change: Mapping[str, Any], before: Settings) -> Settings:
+def settings_asked(change: Mapping[str, Any], before: Settings) -> Settings:
     """The change as settings; a swap of humidifiers moves the exchanger's volume unless a volume is given."""
     known = {f.name for f in fields(Settings)}
     for name in change:
@@ -117,6 +121,10 @@ def _asked(change: Mapping[str, Any], before: Settings) -> Settings:
     after = before.then(asked)
     if after.rate_per_min == 0 and after.mode != "support":
         raise Impossible("rate_per_min", after.rate_per_min, "more than 0 outside support mode")
+    breath_s, inspiration_s = 60.0 / (after.rate_per_min or 1.0), after.inspiratory_time_s or 0.0
+    if {"inspiratory_time_s", "rate_per_min"} & change.keys() and inspiration_s >= breath_s:
+        expected = f"less than the whole breath of {breath_s:.1f} s"
+        raise Impossible("inspiratory_time_s", after.inspiratory_time_s, expected)
     if asked.humidifier is None or asked.apparatus_dead_space_ml is not None or device_ml is None:
         return asked
     swap = (before.humidifier, asked.humidifier)
@@ -129,7 +137,7 @@ def _asked(change: Mapping[str, Any], before: Settings) -> Settings:
 
 def _draws(gas: Gas, refused: frozenset[str]) -> dict[str, Draws | None]:
     """Draws by quantity; lungs that have no steady state are left out of all of them alike."""
-    solved = np.isfinite(gas.pao2_mmhg)
+    solved = np.all([np.isfinite(getattr(gas, q)) for q in QUANTITIES], axis=0)
     return {q: None if q in refused else Draws(getattr(gas, q)[solved]) for q in QUANTITIES}
 
 
@@ -138,8 +146,11 @@ def _values(draws: Draws | None) -> Array | None:
 
 
 def _now(fit: Fit) -> dict[str, float | None]:
+    """The last usable gas at 37 C, as everything forecast is."""
     gas = fit.case.entries[fit.gas_number].gas
-    return {q: getattr(gas, q) for q in QUANTITIES}
+    assert gas is not None  # a usable gas
+    ph, paco2_mmhg, pao2_mmhg = gas_at_37(gas)
+    return {"ph": ph, "paco2_mmhg": paco2_mmhg, "pao2_mmhg": pao2_mmhg, "sao2": gas.sao2}
 
 
 def _in_target(settled: dict[str, Draws | None], target: Target | None) -> dict[str, float | None]:

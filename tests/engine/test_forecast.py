@@ -467,6 +467,15 @@ def test_any_possible_change_is_forecast_or_refused_in_words(fitted, change, min
         assert any("ot forecast" in text for text in found.cautions)
 
 
+def test_a_lung_without_a_state_before_the_change_is_left_out_of_all_quantities_alike(fitted):
+    """Far ahead a heavy tail of drift reaches lungs that cannot live: they must not become a NaN."""
+    change = {"tidal_volume_ml": 441.0, "flow_l_per_min": 1.0, "pause_s": 0.0, "humidifier": "exchanger"}
+    found = forecast(fitted, change | {"apparatus_dead_space_ml": 0.0}, minutes=886.0)
+    counts = {len(draws.values) for draws in found.next_gas.values()}
+    assert len(counts) == 1
+    assert all(np.isfinite(draws.values).all() for draws in found.next_gas.values())
+
+
 # Probabilities
 
 
