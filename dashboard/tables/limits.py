@@ -8,6 +8,7 @@ from html import escape
 from dashboard.wording import LIMIT_LABELS, Units, chance_text, sentence_text
 from engine.limits import Limit
 
+_RANKS = ("past", "in doubt", "past, soft", "in doubt, soft", "inside", "unknown")
 _NUMBERS = re.compile(r"\d+(?:\.\d+)?")
 
 
@@ -47,11 +48,17 @@ def _ends(limit: Limit) -> list[float]:
 
 
 def in_order(limits: Sequence[Limit]) -> list[Limit]:
-    """Past hard limits, past soft ones, then by how little room is left, and the unknown ones last."""
+    """Hard limits past, then in doubt, soft ones alike, then those inside, and the unknown ones last.
+
+    Within each the one with the least room comes first; of those in doubt, the least probable one.
+    """
 
     def place(limit: Limit) -> tuple[int, float]:
-        margin = margin_of(limit)
-        rank = 2 if limit.ok else 3 if limit.ok is None else 0 if limit.level == "hard" else 1
+        rank, margin = _RANKS.index(limit.verdict), margin_of(limit)
+        if limit.verdict in ("past", "in doubt") and limit.level == "soft":
+            rank += 2
+        if limit.verdict == "in doubt":
+            return rank, limit.probability or 0.0
         return rank, margin.share if margin else 9.0
 
     return sorted(limits, key=place)
@@ -59,7 +66,7 @@ def in_order(limits: Sequence[Limit]) -> list[Limit]:
 
 def nearest_of(limits: Sequence[Limit]) -> Limit | None:
     """The hard limit that binds first, the soft ones only where no hard one is known."""
-    known = [limit for limit in in_order(limits) if limit.ok is not None]
+    known = [limit for limit in in_order(limits) if limit.verdict != "unknown"]
     return next((limit for limit in known if limit.level == "hard"), known[0] if known else None)
 
 
@@ -68,10 +75,12 @@ def nearest_limit(limits: Sequence[Limit], units: Units) -> str:
     limit = nearest_of(limits)
     if limit is None:
         return '<div class="fb-nearest"><small>Nearest limit</small><b>none known yet</b></div>'
-    breach = limit.ok is False
-    title = f"Past a {limit.level} limit" if breach else f"Nearest {limit.level} limit"
+    title, kind = {
+        "past": (f"Past a {limit.level} limit", " fb-breach"),
+        "in doubt": (f"A {limit.level} limit in doubt", " fb-doubt"),
+    }.get(limit.verdict, (f"Nearest {limit.level} limit", ""))
     return (
-        f'<div class="fb-nearest{" fb-breach" if breach else ""}"><small>{title}</small>'
+        f'<div class="fb-nearest{kind}"><small>{title}</small>'
         f"<b>{_name(limit)} {_value(limit, units)}</b><span>{_margin(limit, units)}</span></div>"
     )
 
@@ -79,9 +88,9 @@ def nearest_limit(limits: Sequence[Limit], units: Units) -> str:
 def limits_at_a_glance(limits: Sequence[Limit], units: Units, most: int = 4) -> str:
     """The next few after the nearest, one short line each; the full table stands further down."""
     nearest = nearest_of(limits)
-    known = [limit for limit in in_order(limits) if limit.ok is not None and limit is not nearest][:most]
+    known = [row for row in in_order(limits) if row.verdict != "unknown" and row is not nearest][:most]
     lines = "".join(
-        f'<tr class="fb-{_verdict(limit)}"><th scope="row">{_name(limit)}</th>'
+        f'<tr class="{_class(limit)}"><th scope="row">{_name(limit)}</th>'
         f"<td>{_value(limit, units)}</td><td>{_margin(limit, units)}</td></tr>"
         for limit in known
     )
@@ -107,12 +116,11 @@ def _line(limit: Limit, units: Units) -> str:
         escape(sentence_text(limit.source, units)),
     )
     body = "".join(f"<td>{cell}</td>" for cell in cells)
-    verdict = _verdict(limit)
-    return f'<tr class="fb-{verdict}"><th scope="row">{verdict}</th>{body}</tr>'
+    return f'<tr class="{_class(limit)}"><th scope="row">{limit.verdict}</th>{body}</tr>'
 
 
-def _verdict(limit: Limit) -> str:
-    return "unknown" if limit.ok is None else "inside" if limit.ok else "past"
+def _class(limit: Limit) -> str:
+    return f"fb-{limit.verdict.removeprefix('in ')}"
 
 
 def _name(limit: Limit) -> str:
@@ -132,6 +140,8 @@ def _limit(limit: Limit, units: Units) -> str:
 
 
 def _margin(limit: Limit, units: Units) -> str:
+    if limit.verdict == "in doubt":
+        return _doubt(limit, units)
     margin = margin_of(limit)
     if margin is None:
         return "not known"
@@ -139,6 +149,13 @@ def _margin(limit: Limit, units: Units) -> str:
         return f"at the limit, {_number(margin.end, limit, units)}"
     word = "left to" if limit.ok else "above" if margin.above else "below"
     return f"{_number(abs(margin.left), limit, units)} {word} {_number(margin.end, limit, units)}"
+
+
+def _doubt(limit: Limit, units: Units) -> str:
+    """For example "in doubt: 20 % chance below 55 mmHg"; of a range, the chance outside."""
+    ends = _ends(limit)
+    side = "outside" if len(ends) != 1 else "below" if (limit.value or 0.0) >= ends[0] else "above"
+    return f"in doubt: {chance_text(1 - (limit.probability or 0.0))} chance {side} {_limit(limit, units)}"
 
 
 def _number(value: float, limit: Limit, units: Units) -> str:

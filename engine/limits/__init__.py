@@ -8,11 +8,11 @@ from collections.abc import Callable
 
 from engine.estimates.chest import Mechanics, mechanics_of
 from engine.limits import blood, chest, ventilator
-from engine.limits.row import Limit, Uncertain
+from engine.limits.row import SURELY_KEPT, Limit, Uncertain, Verdict
 from engine.limits.tried import Tried
 from engine.record import Patient, Settings
 
-__all__ = ["TABLE", "Limit", "Mechanics", "limits_for", "mechanics_of"]
+__all__ = ["SURELY_KEPT", "TABLE", "Limit", "Mechanics", "Verdict", "limits_for", "mechanics_of"]
 
 TABLE: tuple[Callable[[Tried], Limit | None], ...] = (
     ventilator.tidal_volume,

@@ -11,6 +11,10 @@ Uncertain = Array | float | None
 """Draws of a quantity, one number where it is certain, None where it is not known."""
 
 Level = Literal["hard", "soft"]
+Verdict = Literal["past", "in doubt", "inside", "unknown"]
+SURELY_KEPT = 0.9
+"""A limit whose value is inside with less probability than this is in doubt: design decision, no source."""
+
 _EDGE = 1e-9  # a value typed as the limit itself is inside, whatever the arithmetic left behind
 
 
@@ -33,6 +37,15 @@ class Limit:
     probability: float | None
     says: str
     source: str
+
+    @property
+    def verdict(self) -> Verdict:
+        """How the row may be called: never "inside" on a median alone, where the draws are not sure of it."""
+        if self.ok is False:
+            return "past"
+        if self.probability is not None and self.probability < SURELY_KEPT:
+            return "in doubt"
+        return "unknown" if self.ok is None else "inside"
 
 
 def middle(value: Uncertain) -> float | None:

@@ -157,3 +157,12 @@ def test_a_set_value_outside_a_hard_limit_is_never_ok(
     for row in rows.values():
         assert row.probability is None or 0.0 <= row.probability <= 1.0
         assert row.ok is None or row.value is not None
+
+
+def test_a_row_inside_by_its_median_alone_is_in_doubt():
+    """Of 100 draws, 10 below the floor leave it kept; 11 do not, though the median is far inside."""
+    for below, verdict in ((10, "inside"), (11, "in doubt"), (51, "past")):
+        found = find("pao2_floor", pao2_mmhg=np.repeat([50.0, 70.0], [below, 100 - below]))
+        assert found.verdict == verdict
+    assert find("pao2_floor", pao2_mmhg=70.0).verdict == "inside"  # one number carries no doubt
+    assert find("pao2_floor").verdict == "unknown"

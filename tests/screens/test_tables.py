@@ -119,6 +119,55 @@ def test_breaches_come_first_then_the_least_room_then_the_unknown(make_limit):
     ]
 
 
+SURE, UNSURE = 0.9, 0.899  # either side of engine.limits.SURELY_KEPT
+
+
+def test_a_hard_limit_in_doubt_is_not_shown_as_kept_and_outranks_a_comfortable_one(make_limit):
+    """The median of 62 is above the floor, yet one gas in five would read below it."""
+    floor = make_limit("pao2_floor", 62.0, 55.0, True, unit="mmHg", probability=0.8)
+    rate = make_limit("set_rate", 34.0, 35.0, True, unit="/min")
+    headline = nearest_limit([rate, floor], Units())
+    assert words(headline) == ("A hard limit in doubt Low PaO₂ 62 mmHg in doubt: 20 % chance below 55 mmHg")
+    assert "fb-doubt" in headline and "fb-breach" not in headline
+    assert "in doubt: 20 % chance below 7.3 kPa" in words(nearest_limit([rate, floor], Units("kPa")))
+    _, first, second = rows(limits_table([rate, floor], Units()))
+    assert first[0] == "in doubt" and "20 % chance below" in first[4] and second[0] == "inside"
+
+
+def test_the_glance_says_in_doubt_with_the_chance_on_the_bad_side(make_limit):
+    broken = make_limit("set_rate", 36.0, 35.0, False, unit="/min")
+    above = make_limit("ph_ceiling", 7.5, 7.55, True, probability=0.7)
+    either = make_limit("tidal_volume", 6.0, "4 to 8 mL/kg", True, unit="mL/kg", probability=0.6)
+    unjudged = make_limit("plateau", 29.0, 30.0, None, unit="cmH2O", probability=0.65)
+    glance = rows(limits_at_a_glance([above, either, unjudged, broken], Units()))
+    assert [row[2] for row in glance] == [
+        "in doubt: 40 % chance outside 4 to 8 mL/kg",
+        "in doubt: 35 % chance above 30 cmH₂O",
+        "in doubt: 30 % chance above 7.55",
+    ]
+
+
+@pytest.mark.parametrize(
+    ("probability", "verdict"), [(SURE, "inside"), (UNSURE, "in doubt"), (None, "inside")]
+)
+def test_each_side_of_doubt(make_limit, probability, verdict):
+    row = make_limit("pao2_floor", 62.0, 55.0, True, unit="mmHg", probability=probability)
+    assert rows(limits_table([row], Units()))[1][0] == verdict
+
+
+def test_order_past_and_in_doubt_hard_before_soft(make_limit):
+    limits = [
+        make_limit("inside", 10.0, 30.0, True),
+        make_limit("soft doubt", 10.0, 30.0, True, level="soft", probability=0.5),
+        make_limit("soft past", 31.0, 30.0, False, level="soft"),
+        make_limit("hard doubt", 10.0, 30.0, True, probability=0.89),
+        make_limit("hard past", 31.0, 30.0, False, probability=0.2),
+    ]
+    assert [row.name for row in in_order(limits)] == [
+        "hard past", "hard doubt", "soft past", "soft doubt", "inside",
+    ]  # fmt: skip
+
+
 def test_nearest_limit_in_large_words(make_limit):
     rate = make_limit("set_rate", 33.0, 35.0, True, unit="/min")
     assert (
@@ -132,11 +181,11 @@ def test_nearest_limit_in_large_words(make_limit):
 
 def test_every_limit_shows_number_limit_margin_and_source(make_limit):
     head, row = rows(
-        limits_table([make_limit("fio2", 0.5, 0.6, True, level="soft", probability=0.25)], Units())
+        limits_table([make_limit("fio2", 0.5, 0.6, True, level="soft", probability=0.95)], Units())
     )
     assert dict(zip(head, row, strict=True)) == {
         "": "inside", "Limit on": "FiO₂", "Value": "50 %", "Limit": "60 % (soft)",
-        "Margin": "10 % left to 60 %", "Chance inside": "25 %",
+        "Margin": "10 % left to 60 %", "Chance inside": "95 %",
         "What it says": "fio2 says", "Source": "source2031",
     }  # fmt: skip
 
