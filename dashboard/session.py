@@ -3,10 +3,12 @@
 A tab holds the patients it has seen, which one is in hand, the change being tried and the steps back from it.
 Trying saves nothing. The functions below are the widgets' callbacks: they change the `Bed` and keep the text
 in every field equal to the value in use, so that no field ever shows one number while another is computed
-with.
+with. Where one choice moves another setting, as a humidifier moves apparatus dead space, the engine's
+`settings_asked` says by how much; and what is forecast is `asked`, never more than the fields show.
 """
 
 from collections.abc import Mapping, MutableMapping
+from contextlib import suppress
 from dataclasses import dataclass, field
 from datetime import UTC, datetime, timedelta
 from typing import Any
@@ -16,13 +18,12 @@ import streamlit as st
 
 from dashboard import demos, typed
 from dashboard.wording import FIELDS, Units
+from engine.forecast import settings_asked
 from engine.reading.case_file import BadCase, case_from_bytes
-from engine.record import CHOICES, Case, Settings
+from engine.record import CHOICES, Case, Impossible, Settings
 
 STEPS_BACK = 50
-LIVE_WITHIN = timedelta(
-    hours=24
-)  # a file whose last entry is farther from the clock is read as of that entry
+LIVE_WITHIN = timedelta(hours=24)  # a file whose last entry is farther off is read as of that entry
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -205,15 +206,37 @@ def step_number(name: str, direction: int) -> None:
 
 
 def choose_humidifier() -> None:
-    """Callback of the humidifier; the volume of an exchanger goes and comes with it."""
-    before, choice = charted(), st.session_state[field_key("humidifier")]
-    choice = choice if choice in CHOICES["humidifier"] else before.humidifier
-    volume = before.apparatus_dead_space_ml
-    if before.humidifier == "exchanger" and volume is not None:
-        volume = 0.0 if choice == "heated" else volume
-        _try({"humidifier": choice, "apparatus_dead_space_ml": volume})
-    else:
-        _try({"humidifier": choice})
+    """Callback of the humidifier; the field beside it takes the volume that the forecast will take.
+
+    Going back to a humidifier that moves no volume takes away what the other one brought, and nothing else.
+    """
+    choice = st.session_state[field_key("humidifier")]
+    choice = choice if choice in CHOICES["humidifier"] else charted().humidifier
+    went, comes = _volume_with(in_use("humidifier")), _volume_with(choice)
+    change: dict[str, object] = {"humidifier": choice}
+    if comes is not None:
+        change["apparatus_dead_space_ml"] = comes
+    elif went is not None and went == in_use("apparatus_dead_space_ml"):
+        change["apparatus_dead_space_ml"] = charted().apparatus_dead_space_ml
+    _try(change)
+
+
+def _volume_with(humidifier: str | None) -> float | None:
+    """Apparatus dead space that the engine takes with this humidifier; None where it moves none."""
+    with suppress(Impossible):  # charted settings that cannot be are told where the forecast would stand
+        return settings_asked({"humidifier": humidifier}, charted()).apparatus_dead_space_ml
+    return None
+
+
+def asked() -> dict[str, object]:
+    """The change to forecast: what is tried, and beside another humidifier the volume that the field shows.
+
+    Without it the engine would move the volume of an exchanger even where a hand has typed the charted one.
+    """
+    change, volume = dict(bed().tried), in_use("apparatus_dead_space_ml")
+    return change | (
+        {"apparatus_dead_space_ml": volume} if "humidifier" in change and volume is not None else {}
+    )
 
 
 def toggle_effort() -> None:

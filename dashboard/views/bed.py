@@ -280,7 +280,7 @@ def _forecast(state: Bed, case: Case, now: datetime) -> Forecast | str:
     """The forecast of what is being tried, or the reason for none."""
     try:
         with st.spinner("Working out the forecast."):
-            return cached.forecast(case, state.tried, at=now, effort_stops=state.effort_stops)
+            return cached.forecast(case, session.asked(), at=now, effort_stops=state.effort_stops)
     except NothingToSay as why:
         return f"No forecast: {why}."
     except Impossible as why:

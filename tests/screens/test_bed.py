@@ -9,6 +9,8 @@ import pytest
 
 from dashboard import demos, session
 from dashboard.session import Held
+from engine import forecast as forecasting
+from engine.forecast import settings_asked
 from engine.reading.case_file import text_from_case
 from engine.record import Entry, Settings
 
@@ -176,6 +178,44 @@ def test_a_heated_humidifier_takes_the_exchanger_s_volume_with_it(own, html_of):
     assert "Apparatus dead space 55 mL → 0 mL" in tried(html_of(own))
     press(own, "undo")
     assert field(own, "apparatus_dead_space_ml").value == "55" and "all as charted" in tried(html_of(own))
+
+
+def humidify(app, choice):
+    app.segmented_control(key=session.field_key("humidifier")).set_value(choice).run()
+    assert not app.exception
+
+
+def heated(case, volume_ml=15):
+    entry = case.entries[0]
+    settings = replace(entry.settings, humidifier="heated", apparatus_dead_space_ml=volume_ml)
+    return replace(case, entries=(replace(entry, settings=settings), *case.entries[1:]))
+
+
+def test_an_exchanger_brings_its_volume_into_the_field(bed, case, html_of):
+    """From 15 mL behind a heated humidifier: the field shows what is forecast with, and back."""
+    upload(bed, text_from_case(demos.moved_to_present(heated(case), datetime.now(UTC))))
+    expected = settings_asked({"humidifier": "exchanger"}, heated(case).entries[0].settings)
+    humidify(bed, "exchanger")
+    shown = field(bed, "apparatus_dead_space_ml").value
+    assert float(shown) == expected.apparatus_dead_space_ml > 15
+    assert f"Apparatus dead space 15 mL → {shown} mL" in tried(html_of(bed))
+    humidify(bed, "heated")
+    assert field(bed, "apparatus_dead_space_ml").value == "15" and "all as charted" in tried(html_of(bed))
+
+
+def test_a_volume_typed_beside_another_humidifier_is_the_one_forecast(bed, case, monkeypatch):
+    """Even the charted one, which as a change alone would be none."""
+    upload(bed, text_from_case(demos.moved_to_present(heated(case), datetime.now(UTC))))
+    sent, quick = [], forecasting.forecast
+    monkeypatch.setattr(
+        forecasting, "forecast", lambda fit, change, **more: sent.append(change) or quick(fit, change, **more)
+    )
+    humidify(bed, "exchanger")
+    type_in(bed, "apparatus_dead_space_ml", "15")
+    assert field(bed, "apparatus_dead_space_ml").value == "15"
+    assert sent[-1] == {"humidifier": "exchanger", "apparatus_dead_space_ml": 15.0}
+    humidify(bed, "heated")
+    assert field(bed, "apparatus_dead_space_ml").value == "15"
 
 
 def test_peep_can_be_tried_and_oxygen_is_not_forecast(own, html_of):
