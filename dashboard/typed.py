@@ -52,7 +52,7 @@ def read(text: str, field: Field) -> Typed:
     ------
     Unclear
         Not a number; a number outside the possible range; 0.5 in a per-cent field, where 50 may be meant;
-        1,250 where both 1.25 and 1250 are possible.
+        1,250 where both 1.25 and 1250 are possible, or in a field of whole numbers.
     """
     bare = _without_unit(text, field)
     if not bare:
@@ -82,11 +82,20 @@ def _shortened(text: str) -> str:
 
 
 def _ask_about_groups(bare: str, shown: float, field: Field) -> None:
-    """1,250 is 1.25 to one reader and 1250 to the next."""
+    """1,250 is 1.25 to one reader and 1250 to the next.
+
+    Where values are whole numbers, nobody types three decimals: it is asked even if 1250 cannot be.
+    """
     if not _LOOKS_GROUPED.fullmatch(bare):
         return
     whole = float(re.sub("[.,]", "", bare))
-    if field.low <= field.from_screen(whole) <= field.high:
+    possible = field.low <= field.from_screen(whole) <= field.high
+    if field.digits == 0 and not possible:
+        raise Unclear(
+            f"“{bare}”: thousands or decimals? {whole:g}{field.unit_after_number} cannot be, expected "
+            f"{field.range_text}; for {shown:g} type {shown:g}."
+        )
+    if possible:
         raise Unclear(
             f"“{bare}” could be {shown:g} or {whole:g}. Type it without the mark: {whole:g}, or {shown:g}."
         )

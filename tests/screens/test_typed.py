@@ -7,9 +7,13 @@ from hypothesis import strategies as st
 from dashboard.typed import Unclear, read, stepped
 from dashboard.wording import FIELDS
 
-FIO2, RATE, VOLUME, TIME = (
-    FIELDS[name] for name in ("fio2", "rate_per_min", "tidal_volume_ml", "inspiratory_time_s")
-)
+FIO2, RATE, VOLUME, TIME, PEEP, DEAD_SPACE = (
+    FIELDS[name]
+    for name in (
+        "fio2", "rate_per_min", "tidal_volume_ml", "inspiratory_time_s", "peep_cmh2o",
+        "apparatus_dead_space_ml",
+    )
+)  # fmt: skip
 
 
 @pytest.mark.parametrize("text", ["7.4", "7,4", " 7,4 ", "7.40", "07,4", "7,4 s", "7.4s"])
@@ -30,6 +34,18 @@ def test_a_three_digit_fraction_is_taken_where_the_thousand_cannot_be():
 def test_a_group_of_three_digits_is_refused_with_the_range_or_asked(text):
     with pytest.raises(Unclear, match=r"could be 1\.25 or 1250"):
         read(text, VOLUME)
+
+
+@pytest.mark.parametrize("text", ["1,250", "1.250", "20,000", "12.500"])
+@pytest.mark.parametrize("field", [RATE, PEEP, DEAD_SPACE, FIO2], ids=lambda field: field.name)
+def test_a_group_of_three_in_a_field_of_whole_numbers_is_asked_not_read(text, field):
+    """1250 breaths a minute cannot be, yet 1.25 is as little what was meant."""
+    with pytest.raises(Unclear, match="thousands or decimals"):
+        read(text, field)
+
+
+def test_two_decimals_in_a_field_of_whole_numbers_are_read():
+    assert read("12,25", RATE).value == 12.25
 
 
 @pytest.mark.parametrize(
