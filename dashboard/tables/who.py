@@ -7,11 +7,11 @@ from dashboard.wording import OLD_HOURS, age_text, clock_text
 from engine.record import Case
 
 
-def who_line(case: Case, demo: bool, live: bool, now: datetime) -> str:
+def who_line(case: Case, demo: bool, live: bool, clock: datetime) -> str:
     """Bed label, sex, height, last usable gas and settings with their ages; a demo is marked as one.
 
-    ``now`` is the moment the screen speaks of. Where it is not ``live``, a file from another day is in hand,
-    and the line says so.
+    Ages count from the ``clock``, whatever moment the rest of the screen speaks of. Where the case is not
+    ``live``, that moment is its last entry, and the line says so.
     """
     patient = case.patient
     person = [patient.sex or "sex not charted"]
@@ -19,31 +19,36 @@ def who_line(case: Case, demo: bool, live: bool, now: datetime) -> str:
     parts = [
         f"<b>{escape(case.label)}</b>",
         f"<span>{escape(', '.join(person))}</span>",
-        _last_gas(case, now),
+        _last_gas(case, clock),
     ]
     settings = settings_changed_at(case)
     if settings is not None:
         parts.append(
-            f"<span>settings since {clock_text(settings, now)} <em>{age_text(settings, now)}</em></span>"
+            f"<span>settings since {clock_text(settings, clock)} <em>{age_text(settings, clock)}</em></span>"
         )
     if not live:
-        parts.append(f'<span class="fb-old">Not live: read as of {now:%d %b %Y %H:%M}, its last entry</span>')
+        last = case.entries[-1].time.astimezone(clock.tzinfo)
+        parts.append(
+            f'<span class="fb-old">Not live: file of {last.day} {last:%b %Y}, read as of its last entry at '
+            f"{last:%H:%M}</span>"
+        )
     if demo:
         parts.append('<span class="fb-demo">Demo: invented patient</span>')
     return f'<div class="fb-who">{"".join(parts)}</div>'
 
 
-def _last_gas(case: Case, now: datetime) -> str:
+def _last_gas(case: Case, clock: datetime) -> str:
     gases = case.usable_gases()
     if not gases:
         return "<span>no usable gas</span>"
     drawn = case.entries[gases[-1]].gas_time
-    age = f"<em>{age_text(drawn, now)}</em>"
-    if now - drawn > timedelta(hours=OLD_HOURS):
+    age = f"<em>{age_text(drawn, clock)}</em>"
+    if clock - drawn > timedelta(hours=OLD_HOURS):
         age = (
-            f'<em class="fb-old">{age_text(drawn, now)}: older than {OLD_HOURS} h, no basis for a change</em>'
+            f'<em class="fb-old">{age_text(drawn, clock)}: older than {OLD_HOURS} h, '
+            "the lung may have moved since</em>"
         )
-    return f"<span>last gas {clock_text(drawn, now)} {age}</span>"
+    return f"<span>last gas {clock_text(drawn, clock)} {age}</span>"
 
 
 def settings_changed_at(case: Case) -> datetime | None:

@@ -111,7 +111,8 @@ def _who() -> None:
     """Ages go on counting while the screen stands untouched."""
     held = session.bed().in_hand
     if held is not None:
-        st.html(who_line(held.case, held.demo, held.live(session.now()), session.moment()))
+        clock = session.now()
+        st.html(who_line(held.case, held.demo, held.live(clock), clock))
 
 
 def _choices(state: Bed) -> None:
@@ -285,4 +286,5 @@ def _forecast(state: Bed, case: Case, now: datetime) -> Forecast | str:
         return f"No forecast: {why}."
     except Impossible as why:
         label = SETTING_LABELS.get(why.field, why.field)
-        return f"No forecast of this change: {label} {why.value} cannot be; expected {why.expected}."
+        value = setting_text(why.field, why.value)
+        return f"No forecast of this change: {label} {value} cannot be; expected {why.expected}."

@@ -12,7 +12,7 @@ from dashboard.session import Held
 from engine import forecast as forecasting
 from engine.forecast import settings_asked
 from engine.reading.case_file import text_from_case
-from engine.record import Entry, Settings
+from engine.record import Entry, Impossible, Settings
 
 ICP = "demo:raised_icp"
 TWENTY_MINUTES_OLD = re.compile(
@@ -144,6 +144,15 @@ def test_an_unclear_number_leaves_an_earlier_change_in_use(own, html_of):
     type_in(own, "rate_per_min", "26")
     type_in(own, "rate_per_min", "2 6")
     assert "Still using 26 /min." in html_of(own) and "→ 26 /min" in tried(html_of(own))
+
+
+def test_a_change_that_cannot_be_is_said_in_the_digits_of_the_screen(own, html_of, monkeypatch):
+    def refuses(*_, **__):
+        raise Impossible("rate_per_min", 0.0, "more than 0 outside support mode")
+
+    monkeypatch.setattr(forecasting, "forecast", refuses)
+    type_in(own, "rate_per_min", "0")
+    assert "Set rate 0 /min cannot be; expected more than 0" in html_of(own)
 
 
 def test_markup_typed_into_a_field_stays_text(own, html_of):
@@ -306,9 +315,13 @@ def test_a_file_that_is_no_text_is_refused_too(own, html_of):
 
 
 def test_a_file_from_another_day_is_read_as_of_its_last_entry(bed, case, html_of):
-    upload(bed, text_from_case(case))
-    page = html_of(bed)
-    assert "Not live: read as of 04 Mar 2031 15:10" in page and "<em>0 min ago</em>" in page
+    """And the age of its gas is the true one, with the caution that a gas of this age has anywhere."""
+    now = datetime.now(UTC)
+    day_old = demos.moved(demos.moved_to_present(case, now), timedelta(hours=-25), UTC)
+    upload(bed, text_from_case(day_old))
+    page, last = html_of(bed), day_old.entries[-1].time
+    assert f"Not live: file of {last.day} {last:%b %Y}, read as of its last entry at {last:%H:%M}" in page
+    assert re.search(r"25 h 2[01] min ago: older than 8 h", page) and "<em>0 min ago" not in page
 
 
 def test_a_case_without_a_gas_says_why_there_is_no_forecast(app, case, html_of):

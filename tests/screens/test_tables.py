@@ -241,10 +241,21 @@ def test_whose_data_and_how_old(case, now):
     assert "Demo" not in who_line(case, False, True, now)
 
 
-def test_an_old_gas_and_a_file_from_another_day_are_said(case, now):
+def test_an_old_gas_is_said(case, now):
     assert "older than 8 h" in who_line(case, False, True, now + timedelta(hours=8))
     assert "older than 8 h" not in who_line(case, False, True, now + timedelta(hours=7))
-    assert "Not live: read as of 04 Mar 2031 15:30" in who_line(case, False, False, now)
+
+
+def test_a_file_from_another_day_tells_the_true_age_of_its_gas(case, now):
+    line = words(who_line(case, False, False, now + timedelta(hours=25)))
+    assert "Not live: file of 4 Mar 2031, read as of its last entry at 15:10" in line
+    assert "last gas 04 Mar 15:10 25 h 20 min ago: older than 8 h" in line
+    assert "settings since 04 Mar 11:30 29 h 00 min ago" in line
+
+
+def test_an_old_gas_is_told_by_its_consequence(case, now):
+    line = who_line(case, False, True, now + timedelta(hours=9))
+    assert "the lung may have moved since" in line and "no basis" not in line
 
 
 def test_what_is_not_charted_is_said(case, now):
