@@ -8,7 +8,7 @@ from html import escape
 from dashboard.wording import LIMIT_LABELS, Units, chance_text, sentence_text
 from engine.limits import Limit
 
-_RANKS = ("past", "in doubt", "past, soft", "in doubt, soft", "inside", "unknown")
+_RANKS = ("past", "in doubt", "past, soft", "in doubt, soft", "short", "inside", "unknown")
 _NUMBERS = re.compile(r"\d+(?:\.\d+)?")
 
 
@@ -142,6 +142,8 @@ def _limit(limit: Limit, units: Units) -> str:
 def _margin(limit: Limit, units: Units) -> str:
     if limit.verdict == "in doubt":
         return _doubt(limit, units)
+    if limit.verdict == "short":
+        return f"short of the cautious figure, {_limit(limit, units)}"
     margin = margin_of(limit)
     if margin is None:
         return "not known"

@@ -11,7 +11,7 @@ Uncertain = Array | float | None
 """Draws of a quantity, one number where it is certain, None where it is not known."""
 
 Level = Literal["hard", "soft"]
-Verdict = Literal["past", "in doubt", "inside", "unknown"]
+Verdict = Literal["past", "in doubt", "short", "inside", "unknown"]
 SURELY_KEPT = 0.9
 """A limit whose value is inside with less probability than this is in doubt: design decision, no source."""
 
@@ -25,7 +25,8 @@ class Limit:
     ``level``: hard ones bind what may be proposed, soft ones are shown. ``value`` is what is set or the
     median of the draws, ``limit`` one number or a range as text, in ``unit``. ``ok`` is None where it cannot
     be judged; ``probability`` is the share of draws inside where the value is uncertain. ``says`` is one or
-    two plain sentences, ``source`` where the limit comes from.
+    two plain sentences, ``source`` where the limit comes from. ``short``: the value does not reach
+    a figure that carries a margin of caution, and is no breach without that margin; ``ok`` is then None.
     """
 
     name: str
@@ -37,12 +38,15 @@ class Limit:
     probability: float | None
     says: str
     source: str
+    short: bool = False
 
     @property
     def verdict(self) -> Verdict:
         """How the row may be called: never "inside" on a median alone, where the draws are not sure of it."""
         if self.ok is False:
             return "past"
+        if self.short:
+            return "short"
         if self.probability is not None and self.probability < SURELY_KEPT:
             return "in doubt"
         return "unknown" if self.ok is None else "inside"

@@ -202,8 +202,18 @@ def power_draws(tried: Tried) -> Array | None:
     return power_volume_control_j_per_min(rate, volume, peak, driving)
 
 
-def time_constant_draws(tried: Tried) -> tuple[Array, str]:
-    """Cautious time constants (s): two to three times resistance x compliance, and where these come from.
+@dataclass(frozen=True, slots=True, eq=False)
+class TimeConstants:
+    """Draws of resistance x compliance as it is (``plain_s``), two to three times that (``cautious_s``), and
+    where they come from (``said``)."""
+
+    plain_s: Array
+    cautious_s: Array
+    said: str
+
+
+def time_constants(tried: Tried) -> TimeConstants:
+    """Of the chest after the change; rates and volumes do not move them.
 
     Compliance as measured in a passive patient, resistance from peak, plateau and a constant flow; else
     textbook ranges, of obstructive disease where it is charted.
@@ -222,7 +232,7 @@ def time_constant_draws(tried: Tried) -> tuple[Array, str]:
         f"compliance {usual if compliance is None else f'{compliance:.0f} mL/cmH2O measured'}, "
         f"resistance {usual if resistance is None else f'{resistance:.0f} cmH2O s/L measured'}"
     )
-    return rng.uniform(*_CAUTION, size=count) * plain_s, said
+    return TimeConstants(plain_s, rng.uniform(*_CAUTION, size=count) * plain_s, said)
 
 
 def _measured_or_usual(

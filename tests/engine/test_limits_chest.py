@@ -106,17 +106,51 @@ def test_expiratory_time_against_three_cautious_time_constants():
         and found.ok is True
     )
     fast = find("expiratory_time", tried=replace(SETTINGS, rate_per_min=30))
-    assert fast.value == pytest.approx(1.0) and fast.ok is False and "trapping is likely" in fast.says
+    assert fast.value == pytest.approx(1.0) and fast.ok is False and "Trapping is likely" in fast.says
     assert found.probability is not None and fast.probability is not None
     assert found.probability > 0.95 and fast.probability < 0.05
 
 
-def test_expiratory_time_either_side():
-    longest = find("expiratory_time").limit
-    assert isinstance(longest, float)
-    for left_s, ok in ((longest + 0.01, True), (longest - 0.01, False)):
-        tried = replace(SETTINGS, rate_per_min=60 / (left_s + 1.0))
-        assert find("expiratory_time", tried=tried).ok is ok
+def leaving(left_s: float) -> dict[str, object]:
+    """An inspiration of 1 s at the rate that leaves so many seconds to exhale."""
+    return {"tried": replace(SETTINGS, rate_per_min=60 / (left_s + 1.0))}
+
+
+PLAIN_S = 0.030 * 6 / 0.42  # of `CHEST`: 30 mL/cmH2O x 14.3 cmH2O s/L
+MEDIAN = 0.02  # share: the median of 2,000 draws with a log SD of 0.22
+
+
+def test_expiratory_time_either_side_of_the_cautious_figure():
+    """Richard 2003: lungs empty slower than resistance x compliance. Short of that is said, no breach."""
+    asked = find("expiratory_time").limit
+    assert isinstance(asked, float)
+    kept, short = (find("expiratory_time", **leaving(asked + by)) for by in (0.01, -0.01))
+    assert kept.ok is True and kept.verdict == "in doubt" and not kept.short
+    assert short.ok is None and short.verdict == "short" and "Short of the cautious figure" in short.says
+    assert short.limit == kept.limit and short.probability is not None
+    assert find("expiratory_time", **leaving(2 * asked)).verdict == "inside"
+
+
+def test_expiratory_time_either_side_of_three_plain_time_constants():
+    """Resistance x compliance alone, a lower bound, already leaves too little: that is a breach."""
+    for share, verdict in ((1 + MEDIAN, "short"), (1 - MEDIAN, "past")):
+        found = find("expiratory_time", **leaving(3 * PLAIN_S * share))
+        assert found.verdict == verdict, share
+        assert ("Trapping is likely" in found.says) is (verdict == "past")
+
+
+@pytest.mark.parametrize(("kept_ml", "verdict"), [(29, "short"), (31, "past")])
+def test_expiratory_time_either_side_of_30_ml_trapped_in_a_large_breath(kept_ml: float, verdict: str):
+    """A breath V keeps V x / (1 - x), x = exp(-time / time constant): even 3.2 plain ones can trap 30 mL."""
+    shape = np.exp(-3.2)
+    volume_ml = kept_ml * (1 - shape) / shape
+    chest = replace(CHEST, tidal_volume_ml=volume_ml, plateau_cmh2o=10 + volume_ml / 30)
+    found = find(
+        "expiratory_time",
+        chest=replace(chest, peak_cmh2o=chest.plateau_cmh2o + 6),
+        tried=replace(SETTINGS, tidal_volume_ml=volume_ml, rate_per_min=60 / (3.2 * PLAIN_S + 1.0)),
+    )
+    assert found.verdict == verdict
 
 
 def test_the_total_rate_counts_for_emptying():

@@ -155,6 +155,17 @@ def test_each_side_of_doubt(make_limit, probability, verdict):
     assert rows(limits_table([row], Units()))[1][0] == verdict
 
 
+def test_short_of_a_cautious_figure_is_said_in_ink(make_limit):
+    short = make_limit(
+        "expiratory_time", 2.1, 3.2, None, level="soft", unit="s", probability=0.05, short=True
+    )
+    rate = make_limit("set_rate", 22.0, 35.0, True, unit="/min")
+    glance, table = limits_at_a_glance([rate, short], Units()), limits_table([rate, short], Units())
+    assert rows(glance) == [["Expiratory time", "2.1 s", "short of the cautious figure, 3.2 s"]]
+    assert rows(table)[1][0] == "short" and "fb-past" not in glance + table
+    assert "Set rate" in nearest_limit([rate, short], Units())
+
+
 def test_order_past_and_in_doubt_hard_before_soft(make_limit):
     limits = [
         make_limit("inside", 10.0, 30.0, True),
