@@ -26,7 +26,9 @@ ROOT = Path(__file__).parents[2]
 FLAGS = ["--no-sandbox", "--disable-gpu", "--disable-quic", "--disable-background-networking"]
 FIRST_LOOK_MS, MOVE_MS = 240_000, 30_000
 WARM_UP = 3
-REST_MS = 400  # after the script has ended, so that its last messages and the collector are through
+REST_MS = (
+    400  # after a page comes to the front, and after its script has ended: messages, paint and collector
+)
 
 STOCK = """
 import numpy as np
@@ -106,6 +108,7 @@ def move(page: Page, control: str, key: str) -> float:
     """One press of a key on a control; ms until the picture is repainted."""
     page.bring_to_front()
     page.get_by_role("slider" if control == "Rate" else "button", name=control).focus()
+    page.wait_for_timeout(REST_MS)
     page.keyboard.press(key)
     end = time.monotonic() + MOVE_MS / 1000
     while (took := page.evaluate("window.took")) is None:
