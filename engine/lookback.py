@@ -141,4 +141,4 @@ def _tried(case: Case, change: int | None, number: int) -> tuple[Entry, float | 
     )
     if change == number:
         return tried, None
-    return tried, (case.entries[number].gas_time - made.time) / timedelta(minutes=1)
+    return tried, max((case.entries[number].gas_time - made.time) / timedelta(minutes=1), 0.0)

@@ -6,6 +6,7 @@ venous saturation are used where given, with the scatter named beside each.
 """
 
 from dataclasses import dataclass
+from datetime import timedelta
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,7 +16,7 @@ from engine.lung.settling import Gas
 from engine.physics.carbon_dioxide import pco2_at_temperature_mmhg
 from engine.physics.exchange import Exchange
 from engine.physics.oxygen import po2_at_37_mmhg
-from engine.record import BloodGas
+from engine.record import BloodGas, Case
 
 Array = NDArray[np.float64]
 
@@ -24,6 +25,7 @@ PAO2_CV = 0.036  # hess1992; thorson1983: 0.051
 PH_SD = 0.012  # thorson1983: range 0.03 of six samples, less the part that PaCO2 explains
 SAO2_SD = 0.015  # least significant change 1.3 % of back-to-back samples, plus misfit of a standard curve
 TAIL = 5.0  # degrees of freedom of every scatter
+DYSHB_LASTS = timedelta(hours=6)  # half-time of COHb is 4-6 h on air; common practice, no source
 PH_PER_C = -0.0147  # rosenthal1948 (memory)
 VCO2_CV, VO2_CV, OUTPUT_CV, SVO2_SD = 0.10, 0.10, 0.15, 0.03  # common practice, no source
 
@@ -37,9 +39,24 @@ def gas_at_37(gas: BloodGas) -> tuple[float, float, float]:
     return ph, gas.paco2_mmhg / factor, float(po2_at_37_mmhg(gas.pao2_mmhg, gas.temperature_c))
 
 
-def carrying_hb_g_per_dl(gas: BloodGas) -> float:
-    """Haemoglobin that can carry oxygen: dyshaemoglobins taken off."""
-    return gas.hb_g_per_dl * (1.0 - (gas.cohb or 0.0) - (gas.methb or 0.0))
+def dyshaemoglobins(case: Case, number: int) -> tuple[float, float]:
+    """COHb and MetHb of the gas in entry ``number`` (from 0), each as last measured within `DYSHB_LASTS`.
+
+    A gas without co-oximetry does not mean that what was there has gone.
+    """
+    time, found = case.entries[number].gas_time, [0.0, 0.0]
+    for entry in case.entries[: number + 1]:
+        if entry.gas is not None and time - entry.gas_time <= DYSHB_LASTS:
+            for place, value in enumerate((entry.gas.cohb, entry.gas.methb)):
+                found[place] = found[place] if value is None else value
+    return found[0], found[1]
+
+
+def carrying_hb_g_per_dl(case: Case, number: int) -> float:
+    """Haemoglobin of the gas in entry ``number`` that can carry oxygen: dyshaemoglobins taken off."""
+    gas = case.entries[number].gas
+    assert gas is not None  # a usable gas
+    return gas.hb_g_per_dl * (1.0 - sum(dyshaemoglobins(case, number)))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

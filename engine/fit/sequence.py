@@ -141,7 +141,7 @@ def _after_gas(
     assert gas is not None  # a usable gas
     observed, hb, pressure = (
         _observed(case, number, time),
-        carrying_hb_g_per_dl(gas),
+        carrying_hb_g_per_dl(case, number),
         barometric_mmhg(case.site),
     )
     breathing = breathing_at(case, _settings_of_gas(case, number))
@@ -160,8 +160,9 @@ def _after_gas(
         return Belief(values, before.active[rows], before.own[rows])
 
     def give(belief: Belief, breathing: Breathing) -> Exchange:
+        given = ventilation(belief, breathing, reference)
         return arterial_gas(
-            belief, breathing, reference, hb_g_per_dl=hb, barometric_mmhg=pressure, units=FIT_UNITS
+            belief, breathing, given, hb_g_per_dl=hb, barometric_mmhg=pressure, units=FIT_UNITS
         )
 
     def log_likelihood(e: Array, rows: Rows) -> Array:
@@ -174,7 +175,7 @@ def _after_gas(
             give(belief, breathing_at(case, underway.before)),
             exchange,
             underway.minutes,
-            alveolar_l_per_min=ventilation(belief, breathing).alveolar_l_per_min,
+            alveolar_l_per_min=ventilation(belief, breathing, reference).alveolar_l_per_min,
             weight_kg=weight_kg,
             obstructive=obstructive,
         )

@@ -6,6 +6,8 @@ import numpy as np
 
 from engine.checks.moment import SETTING_WORDS
 from engine.fit import Fit
+from engine.fit.observation import dyshaemoglobins
+from engine.fit.sequence import settings_at
 from engine.fit.underway import underway_at
 from engine.forecast.predict import Prediction
 from engine.lung.prior import logistic
@@ -16,6 +18,9 @@ from engine.record import Settings
 STALE_AFTER = timedelta(hours=8)
 MUCH_SHUNT = 0.30
 MUCH_COHB = 0.10
+MUCH_METHB = 0.10  # common practice, no source
+SPO2_AWAY = 0.04  # iso80601-2-61 (memory): accuracy asked of an oximeter
+FAR_FROM_37_C = 0.5
 LARGE_FIO2_STEP = 0.2 - 1e-9  # of FiO2; common practice, no source. As typed: 0.6 - 0.4 is not quite 0.2
 SEVERE_BASE_DEFICIT = -10.0
 ALKALAEMIA = 7.45
@@ -37,7 +42,9 @@ def cautions_of(
     """All that apply, the gravest first."""
     said = [
         *_harmful_readings(fit, p, changed),
+        *_trapping(fit, p, changed),
         *_breathing(fit, p, settings, changed, effort_stops),
+        *_since_then(fit, p),
         *_devices(changed),
         *_age(fit, at),
         *_identification(fit),
@@ -53,22 +60,28 @@ def _harmful_readings(fit: Fit, p: Prediction, changed: dict[str, tuple[object, 
     said = [*_acid_base(fit, p)]
     gas = fit.case.entries[fit.gas_number].gas
     shunt = float(np.median(logistic(p.belief.of("logit_shunt"))))
-    cohb = gas.cohb if gas is not None and gas.cohb is not None and gas.cohb >= MUCH_COHB else None
+    cohb, methb = dyshaemoglobins(fit.case, fit.gas_number)
+    blind = cohb >= MUCH_COHB or methb >= MUCH_METHB
     if shunt > MUCH_SHUNT:
         said.append(
             f"About {100 * shunt:.0f} % of the blood passes lung without air: FiO2 moves PaO2 little, though "
             "saturation more. The rest is for the team (PEEP, recruitment, position, secretions) and is not "
             "forecast. Lowering FiO2 still desaturates."
         )
-    if gas is not None and cohb is not None:
+    if gas is not None and cohb >= MUCH_COHB:
         sao2 = float(so2_in_blood(gas.pao2_mmhg, gas.ph, gas.paco2_mmhg)) if gas.sao2 is None else gas.sao2
         said.append(
             f"Carboxyhaemoglobin {100 * cohb:.0f} %: SpO2 reads it as oxygenated, and SaO2 here leaves it "
-            f"out; about {100 * sao2 * (1 - cohb - (gas.methb or 0.0)):.0f} % of all haemoglobin carries "
+            f"out; about {100 * sao2 * (1 - cohb - methb):.0f} % of all haemoglobin carries "
             "oxygen. A high FiO2 is also its treatment, and no SpO2 shows what a lower one does."
         )
+    if methb >= MUCH_METHB:
+        said.append(
+            f"Methaemoglobin {100 * methb:.0f} %: SpO2 drifts towards 85 % whatever the saturation is, and "
+            "SaO2 here leaves it out; no SpO2 shows what a change of FiO2 does."
+        )
     step = _lowered_by(changed.get("fio2"))
-    if step > 0 and cohb is None:
+    if step > 0 and not blind:
         said.append("With a lower FiO2 watch SpO2 until the gas: above 96 % it says little about PaO2.")
     if step >= LARGE_FIO2_STEP:
         said.append(
@@ -119,6 +132,51 @@ def _ph_at(paco2_mmhg: float, excess: float) -> str:
     return f"a PaCO2 of {paco2_mmhg:.0f} mmHg would mean a pH of about {ph:.2f}"
 
 
+def _trapping(fit: Fit, p: Prediction, changed: dict[str, tuple[object, object]]) -> list[str]:
+    timing = {"rate_per_min", "tidal_volume_ml", "inspiratory_time_s", "ie_ratio"} & changed.keys()
+    if not p.breathing.obstructive or not timing:
+        return []
+    return [
+        "Obstructive disease: gas that is trapped at a faster rate adds dead space and pressure. A higher "
+        "rate may clear little and raises plateau and trapped pressure, which are not forecast; a lower one "
+        "costs less PaCO2 than the plain equation says. How much is unknown and is in the interval."
+    ]
+
+
+def _since_then(fit: Fit, p: Prediction) -> list[str]:
+    """What was charted beside or since the last gas and does not fit it."""
+    said = []
+    gas = fit.case.entries[fit.gas_number].gas
+    if (
+        gas is not None
+        and gas.temperature_corrected
+        and abs((gas.temperature_c or 37.0) - 37.0) > FAR_FROM_37_C
+    ):
+        said.append(
+            f"The last gas was printed for {gas.temperature_c:.1f} C; now and expected are both at 37 C, and "
+            "cannot be laid beside a print for another temperature."
+        )
+    for entry in reversed(fit.case.entries):
+        if entry.time <= fit.gas_time:
+            break
+        if entry.measured is not None and entry.measured.spo2 is not None:
+            low, high = np.nanquantile(p.before.sao2, [0.25, 0.75])
+            if not low - SPO2_AWAY <= entry.measured.spo2 <= high + SPO2_AWAY:
+                said.append(
+                    f"SpO2 of {100 * entry.measured.spo2:.0f} % charted since the last gas does not fit "
+                    f"it (about {100 * low:.0f} to {100 * high:.0f} % would): the lung may have changed, and "
+                    "this forecast does not know it."
+                )
+            break
+    charted = fit.case.entries[fit.gas_number].settings
+    if charted is not None and settings_at(fit.case, fit.gas_number - 1).differing(charted):
+        said.append(
+            "A change charted together with the last gas has no time of its own: the gas is taken as settled "
+            "after it."
+        )
+    return said
+
+
 def _breathing(
     fit: Fit,
     p: Prediction,
@@ -132,6 +190,11 @@ def _breathing(
             "If breathing effort stops (paralysis, sedation) the set rate and volume alone ventilate: this "
             "is that forecast."
         )
+        if settings.mode != "volume":
+            said.append(
+                "The volume is still the one that effort and pressure made together: without effort it will "
+                "be smaller, by an unknown amount, and PaCO2 higher."
+            )
     elif own.triggering and own.per_min is not None:
         said.append(
             f"The patient breathes at {own.per_min:.0f}/min of their own: a set rate below that changes next "

@@ -101,11 +101,10 @@ def predict(
         return arterial_gas(
             belief,
             breathing,
-            fit.reference,
+            ventilation(belief, breathing, fit.reference, stopping),
             hb_g_per_dl=fit.hb_g_per_dl,
             barometric_mmhg=fit.barometric_mmhg,
             units=UNITS,
-            stopping=stopping,
         )
 
     def on_the_way(leaving: Exchange, towards: Exchange, passed: float, flow_l_per_min: Array) -> Gas:
@@ -120,11 +119,11 @@ def predict(
         )
 
     rest, after = give(was), give(now, was if effort_stops else None)
-    given = ventilation(belief, now, effort_stops=effort_stops)
+    given = ventilation(belief, now, fit.reference, was if effort_stops else None)
     before, settled = settled_gas(rest), settled_gas(after)
     state, underway = settled, underway_at(fit.case, tried.time)
     if underway is not None:
-        earlier, flow = give(breathing_at(fit.case, underway.before)), ventilation(belief, was)
+        earlier, flow = give(breathing_at(fit.case, underway.before)), ventilation(belief, was, fit.reference)
         before = on_the_way(earlier, rest, underway.minutes, flow.alveolar_l_per_min)
         state = on_the_way(earlier, rest, underway.minutes + (minutes or 0.0), flow.alveolar_l_per_min)
     if minutes is None:

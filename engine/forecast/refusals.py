@@ -24,9 +24,13 @@ NO_STEADY_STATE = (
     "Not forecast: in too many of the lungs that fit this patient, oxygen uptake or CO2 output cannot be "
     "kept up under these settings, and no steady state is reached."
 )
+BEYOND_PACO2_MMHG = 150.0
+NO_SUCH_PACO2 = (
+    f"Not forecast: PaCO2 would pass {BEYOND_PACO2_MMHG:.0f} mmHg, beyond anything this was measured on."
+)
 NO_PEEP = (
     "PaO2 and SaO2 are not forecast: how a lung answers a change of PEEP cannot be read off its gases "
-    "(P/F changed by -16 to 47 mmHg in half of 983 trials of protocol steps)."
+    "(of 983 patients of one trial the middle half changed P/F by -16 to 47 mmHg)."
 )
 
 
@@ -50,6 +54,8 @@ def refusals(fit: Fit, p: Prediction, changed: Mapping[str, Any]) -> tuple[Refus
         return (Refusal(_ALL, _too_small_a_breath(p)),)
     if np.isfinite(p.settled.pao2_mmhg).mean() < LEAST_SOLVED:
         return (Refusal(_ALL, NO_STEADY_STATE),)
+    if np.nanmedian(p.settled.paco2_mmhg) > BEYOND_PACO2_MMHG:
+        return (Refusal(_ALL, NO_SUCH_PACO2),)
     return (Refusal(frozenset({"pao2_mmhg", "sao2"}), NO_PEEP),) if "peep_cmh2o" in changed else ()
 
 

@@ -20,7 +20,14 @@ Array = NDArray[np.float64]
 LARGEST_SERIES_SHARE = 0.75  # of a breath: above it some alveolar ventilation persists (briscoe1954)
 WIDEST_VQ_LOG_SD = 2.5  # drift in a heavy tail stops here: no lung is wider (severe is 1.5 and more)
 OWN_RATE_SPREAD = 0.05  # ln SD of a patient's own rate about the one charted
-UNCHARTED_RATE = (12.0, 32.0)  # of a patient without set breaths and without a charted total; common practice
+FASTEST_PER_MIN = (
+    45.0  # no patient takes back a loss of volume by breathing faster than this; common practice
+)
+TRAPPING_MOST = (
+    0.6  # share of a change of rate that trapped gas may undo in obstructive disease; reasoned, no source
+)
+LEAST_RATE_PER_MIN = 0.5  # keeps apnoea solvable; no such forecast is shown
+UNCHARTED_RATE = (12.0, 32.0)  # of a patient with neither set breaths nor a charted total; common practice
 OWN_RATE_LEAST = 0.6  # an active patient who does not trigger breathes at this share of the set rate, or more
 
 
@@ -33,17 +40,53 @@ class Ventilation:
     alveolar_l_per_min: Array
 
 
-def ventilation(belief: Belief, breathing: Breathing, *, effort_stops: bool = False) -> Ventilation:
-    """How each draw is ventilated: the larger of set and own rate, series dead space taken off."""
+def ventilation(
+    belief: Belief, breathing: Breathing, reference: Breathing, stopping: Breathing | None = None
+) -> Ventilation:
+    """How each draw is ventilated under ``breathing``.
+
+    A patient who defends a PaCO2 takes back a share of what ventilation has moved since ``reference``, by
+    breathing faster, though never past `FASTEST_PER_MIN`. In obstructive disease a faster rate traps gas,
+    whose dead space undoes part of it, and a slower one frees some: a share up to `TRAPPING_MOST`, unknown,
+    so drawn.
+
+    Parameters
+    ----------
+    belief : Belief
+    breathing : Breathing
+        Now, or as tried.
+    reference : Breathing
+        At the first gas.
+    stopping : Breathing, optional
+        The breathing from which effort stops: ``breathing`` is then delivered by the ventilator alone.
+        Charted paralysis brings its own.
+    """
+    stopping = stopping or breathing.before_paralysis
+    now, usual = _delivered(belief, breathing, effort=stopping is None), _delivered(belief, reference)
+    from_here = now if stopping is None else _delivered(belief, stopping)
+    taken_back = belief.defence() * np.log(usual.alveolar_l_per_min / from_here.alveolar_l_per_min)
+    a_breath_l = (breathing.tidal_volume_ml - now.series_ml) / 1000.0
+    most = np.maximum(FASTEST_PER_MIN * a_breath_l, now.alveolar_l_per_min)
+    alveolar = np.minimum(now.alveolar_l_per_min * np.exp(taken_back), most)
+    rate = now.rate_per_min if stopping is not None else np.maximum(now.rate_per_min, alveolar / a_breath_l)
+    if breathing.obstructive:
+        undone = TRAPPING_MOST * belief.own
+        alveolar = alveolar * (usual.rate_per_min / now.rate_per_min) ** undone
+    return Ventilation(rate, now.series_ml, alveolar)
+
+
+def _delivered(belief: Belief, breathing: Breathing, *, effort: bool = True) -> Ventilation:
+    """The larger of set and own rate, series dead space taken off, and nothing taken back yet."""
     rate = np.full(len(belief), breathing.set_rate_per_min)
-    if not effort_stops:
+    if effort:
         rate = np.maximum(rate, _own_rate(belief, breathing))
+    rate = np.maximum(rate, LEAST_RATE_PER_MIN)
     whole = (
         np.exp(belief.of("ln_series_ml")) + belief.of("apparatus_share") * breathing.apparatus_dead_space_ml
     )
     most = LARGEST_SERIES_SHARE * breathing.tidal_volume_ml
     series = whole / (1.0 + (whole / most) ** 6) ** (1.0 / 6.0)
-    return Ventilation(rate, series, np.maximum(rate, 0.5) * (breathing.tidal_volume_ml - series) / 1000.0)
+    return Ventilation(rate, series, rate * (breathing.tidal_volume_ml - series) / 1000.0)
 
 
 def _own_rate(belief: Belief, breathing: Breathing) -> Array:
@@ -60,12 +103,11 @@ def _own_rate(belief: Belief, breathing: Breathing) -> Array:
 def arterial_gas(
     belief: Belief,
     breathing: Breathing,
-    reference: Breathing,
+    given: Ventilation,
     *,
     hb_g_per_dl: float,
     barometric_mmhg: float,
     units: int,
-    stopping: Breathing | None = None,
 ) -> Exchange:
     """The settled arterial gas of every draw.
 
@@ -74,27 +116,20 @@ def arterial_gas(
     belief : Belief
     breathing : Breathing
         Now, or as tried.
-    reference : Breathing
-        At the first gas: a patient who defends a PaCO2 takes back the share `Belief.defence` of what
-        ventilation moved since then.
+    given : Ventilation
+        What `ventilation` makes of it.
     hb_g_per_dl : float
         Haemoglobin that can carry oxygen.
     barometric_mmhg : float
     units : int
         Of `steady_state`.
-    stopping : Breathing, optional
-        The breathing from which effort stops: ``breathing`` is then delivered by the ventilator alone.
     """
-    now = ventilation(belief, breathing, effort_stops=stopping is not None)
-    defended_from = now if stopping is None else ventilation(belief, stopping)
-    usual = ventilation(belief, reference)
-    taken_back = belief.defence() * np.log(usual.alveolar_l_per_min / defended_from.alveolar_l_per_min)
     vco2 = np.exp(belief.of("ln_vco2"))
     return steady_state(
         shunt=logistic(belief.of("logit_shunt")),
         vq_log_sd=np.exp(np.minimum(belief.of("ln_vq_log_sd"), np.log(WIDEST_VQ_LOG_SD))),
         alveolar_dead_space=logistic(belief.of("logit_dead_space")),
-        alveolar_ventilation_l_per_min=now.alveolar_l_per_min * np.exp(taken_back),
+        alveolar_ventilation_l_per_min=given.alveolar_l_per_min,
         vco2_ml_per_min=vco2,
         vo2_ml_per_min=vco2 / belief.of("rq"),
         cardiac_output_l_per_min=np.exp(belief.of("ln_cardiac_output")),

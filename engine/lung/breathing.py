@@ -12,7 +12,6 @@ from datetime import datetime, timedelta
 from engine.record import Case, Measured, Settings
 
 TRIGGERS_ABOVE_SET_PER_MIN = 1.0  # total above set by more than counting error: the patient triggers
-SUPPORTED_MODES = ("support", "other")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -46,6 +45,8 @@ class Breathing:
     fio2: float
     peep_cmh2o: float | None
     apparatus_dead_space_ml: float
+    obstructive: bool = False
+    before_paralysis: "Breathing | None" = None
 
 
 def breathing_at(case: Case, settings: Settings) -> Breathing:
@@ -65,7 +66,20 @@ def breathing_at(case: Case, settings: Settings) -> Breathing:
         fio2=settings.fio2 or 0.21,
         peep_cmh2o=settings.peep_cmh2o,
         apparatus_dead_space_ml=apparatus_dead_space_ml(settings),
+        obstructive="obstructive" in case.patient.conditions,
+        before_paralysis=_before_paralysis(case),
     )
+
+
+def _before_paralysis(case: Case) -> Breathing | None:
+    """The breathing that charted paralysis put an end to; ``None`` where there is none."""
+    if not paralysed(case):
+        return None
+    begun = max(n for n, entry in enumerate(case.entries) if "paralysis" in entry.events)
+    earlier = case.before(begun)
+    settings = last_settings(earlier)
+    known = settings.rate_per_min is not None and (settings.tidal_volume_ml or _last_exhaled(earlier))
+    return breathing_at(earlier, settings) if known else None
 
 
 def last_settings(case: Case) -> Settings:
@@ -99,16 +113,26 @@ def own_rate_of(case: Case) -> OwnRate:
     """The patient's own rate as the chart tells it: the last total rate beside the set rate of its time."""
     if paralysed(case):
         return OwnRate(per_min=0.0, at_most_per_min=0.0, charted=True)
-    found: tuple[Measured, Settings] | None = None
+    found: tuple[float, Settings] | None = None
     for entry, settings in case.entries_with_settings():
-        if entry.measured is not None and entry.measured.total_rate_per_min is not None:
-            found = (entry.measured, settings)
-    if found is None or found[0].total_rate_per_min is None:
+        total = _total_rate_per_min(entry.measured)
+        if total is not None:
+            found = (total, settings)
+    if found is None:
         return OwnRate(per_min=None, at_most_per_min=last_settings(case).rate_per_min or 0.0, charted=False)
-    total, set_rate = found[0].total_rate_per_min, found[1].rate_per_min or 0.0
+    total, set_rate = found[0], found[1].rate_per_min or 0.0
     if total > set_rate + TRIGGERS_ABOVE_SET_PER_MIN:
         return OwnRate(per_min=total, at_most_per_min=total, charted=True)
     return OwnRate(per_min=None, at_most_per_min=min(total, set_rate), charted=True)
+
+
+def _total_rate_per_min(measured: Measured | None) -> float | None:
+    """Total rate as measured, else minute volume over exhaled volume where both are."""
+    if measured is None or measured.total_rate_per_min is not None:
+        return None if measured is None else measured.total_rate_per_min
+    if measured.minute_volume_l_per_min and measured.exhaled_tidal_volume_ml:
+        return 1000.0 * measured.minute_volume_l_per_min / measured.exhaled_tidal_volume_ml
+    return None
 
 
 def paralysed(case: Case) -> bool:
@@ -122,20 +146,24 @@ def paralysed(case: Case) -> bool:
 def _tidal_volume(case: Case, settings: Settings, in_force: Settings) -> tuple[float, bool]:
     """The volume that rules, and whether it was charted rather than scaled with a pressure."""
     set_ml = settings.tidal_volume_ml
-    if settings.mode == "volume" and set_ml is not None:
+    if set_ml is not None and (settings.mode == "volume" or set_ml != in_force.tidal_volume_ml):
         return set_ml, True
-    if set_ml is not None and set_ml != in_force.tidal_volume_ml:
-        return set_ml, True
-    base = _last_exhaled(case) or set_ml
+    exhaled, then = _last_exhaled(case), in_force
+    base = exhaled[0] if exhaled else set_ml
     assert base is not None  # `Case` guarantees a volume wherever there is a gas
+    if exhaled:
+        then = exhaled[1]
     for field in ("inspiratory_pressure_cmh2o", "support_pressure_cmh2o"):
-        before, after = getattr(in_force, field), getattr(settings, field)
+        before, after = getattr(then, field), getattr(settings, field)
         if before and after is not None and after != before:
             return base * after / before, False
     return base, True
 
 
-def _last_exhaled(case: Case) -> float | None:
-    """The last exhaled volume charted, at any age: nothing newer is known."""
-    volumes = [e.measured.exhaled_tidal_volume_ml for e in case.entries if e.measured is not None]
-    return next((v for v in reversed(volumes) if v), None)
+def _last_exhaled(case: Case) -> tuple[float, Settings] | None:
+    """The last exhaled volume charted, at any age, and the settings it was read under."""
+    found = None
+    for entry, settings in case.entries_with_settings():
+        if entry.measured is not None and entry.measured.exhaled_tidal_volume_ml:
+            found = (entry.measured.exhaled_tidal_volume_ml, settings)
+    return found

@@ -84,7 +84,7 @@ WIDTH = {
 # What a condition moves: (shift of the centre, width instead).
 CONDITION: dict[str, dict[str, tuple[float, float]]] = {
     "obstructive": {"ln_vq_log_sd": (0.25, 0.35), "logit_shunt": (-0.5, 0.8), "logit_dead_space": (0.2, 0.7)},
-    "chronic_hypercapnia": {"standard_base_excess": (8.0, 7.0), "logit_dead_space": (0.2, 0.7)},
+    "chronic_hypercapnia": {"logit_dead_space": (0.2, 0.7)},
     "pregnancy": {"ln_cardiac_output": (0.3, 0.25), "ln_vco2": (0.2, 0.23)},
 }
 ACTIVE_IF_TRIGGERING = 0.97
@@ -180,7 +180,7 @@ def prior_of(patient: Patient, breathing: Breathing, standard_base_excess_mmol_p
 def _active(breathing: Breathing) -> float:
     """The chance, before any gas, that the patient takes part in the breathing."""
     own = breathing.own_rate
-    if own.at_most_per_min == 0.0:
+    if own.charted and own.at_most_per_min == 0.0:
         return 0.0
     if own.triggering:
         return ACTIVE_IF_TRIGGERING

@@ -15,7 +15,7 @@ from engine.fit import Fit, NothingToSay, fit, fits_along
 from engine.fit.observation import PACO2_CV, PAO2_CV, PH_SD, TAIL, carrying_hb_g_per_dl, gas_at_37
 from engine.fit.sequence import DRAWS, NEARBY, settings_at
 from engine.forecast import forecast
-from engine.lung import Belief, arterial_gas, breathing_at, prior_of
+from engine.lung import Belief, arterial_gas, breathing_at, prior_of, ventilation
 from engine.lung.prior import INDEX, PARAMETERS
 from engine.physics.acid_base import standard_base_excess_mmol_per_l
 from engine.physics.carbon_dioxide import pco2_at_temperature_mmhg
@@ -186,7 +186,8 @@ def test_a_first_fit_is_what_plain_weighting_of_prior_draws_gives(stay):
     prior = prior_of(case.patient, breathing, excess)
     values = prior.centre + prior.width * rng.standard_normal((many, len(PARAMETERS)))
     belief = Belief(values, np.zeros(many, dtype=bool), rng.random(many))
-    found = arterial_gas(belief, breathing, breathing, hb_g_per_dl=11.0, barometric_mmhg=760.0, units=11)
+    given = ventilation(belief, breathing, breathing)
+    found = arterial_gas(belief, breathing, given, hb_g_per_dl=11.0, barometric_mmhg=760.0, units=11)
 
     def student(z: np.ndarray) -> np.ndarray:
         return -0.5 * (TAIL + 1.0) * np.log1p(z**2 / TAIL)
@@ -322,7 +323,7 @@ def test_a_temperature_corrected_gas_is_the_same_gas():
 
 def test_dyshaemoglobin_is_capacity_lost():
     poisoned = a_gas(hb_g_per_dl=13.0, cohb=0.25, methb=0.05)
-    assert carrying_hb_g_per_dl(poisoned) == pytest.approx(13.0 * 0.7)
+    assert carrying_hb_g_per_dl(one_gas(poisoned), 0) == pytest.approx(13.0 * 0.7)
     fitted, plain = (fit(one_gas(g), draws=FEW) for g in (poisoned, a_gas(hb_g_per_dl=13.0 * 0.7)))
     assert fitted.hb_g_per_dl == pytest.approx(9.1)
     np.testing.assert_allclose(medians(fitted), medians(plain), rtol=1e-6)  # the same lung but for rounding

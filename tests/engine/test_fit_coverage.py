@@ -15,7 +15,7 @@ import pytest
 from engine.fit import fit
 from engine.fit.observation import PACO2_CV, PAO2_CV, PH_SD, TAIL
 from engine.forecast import forecast
-from engine.lung import Belief, arterial_gas, breathing_at, drift_between, prior_of
+from engine.lung import Belief, arterial_gas, breathing_at, drift_between, prior_of, ventilation
 from engine.lung.drift import heavy_tail
 from engine.lung.prior import INDEX, PARAMETERS
 from engine.physics.exchange import Exchange
@@ -108,10 +108,11 @@ def stay_of_a_drawn_lung(rng: np.random.Generator, gases: int) -> tuple[Case, np
             moved = truth.values + drift.shift + drift.sd * rng.standard_normal(drift.sd.shape)
             truth = Belief(moved, truth.active, truth.own)
             case = replace(case, entries=(*case.entries, *entries))
+        now = breathing_at(case, in_force)
         found = arterial_gas(
             truth,
-            breathing_at(case, in_force),
-            breathing,
+            now,
+            ventilation(truth, now, breathing),
             hb_g_per_dl=11.0,
             barometric_mmhg=760.0,
             units=11,

@@ -369,12 +369,30 @@ def test_peep_tried_gives_no_oxygen_and_a_plateau_with_its_chance(fitted):
 def test_a_breath_not_much_above_its_dead_space_is_not_forecast(fitted):
     series_ml = float(np.median(np.exp(fitted.belief.of("ln_series_ml"))))
     small = LEAST_VOLUME_OVER_SERIES * series_ml
-    kept, refused = (forecast(fitted, {"tidal_volume_ml": round(small * f)}) for f in (1.1, 0.9))
+    fast = {"rate_per_min": 34.0}  # or PaCO2 would leave all that was measured, which is refused too
+    kept, refused = (forecast(fitted, {"tidal_volume_ml": round(small * f), **fast}) for f in (1.1, 0.9))
     assert kept.next_gas["paco2_mmhg"] is not None
     assert all(refused.next_gas[q] is None and refused.settled[q] is None for q in QUANTITIES)
     assert all(value is None for value in (*refused.harm.values(), *refused.in_target.values()))
     assert "1.5 times the series dead space" in refused.cautions[0]
     assert refused.recheck.settled_minutes is None
+
+
+def test_a_paco2_beyond_all_measuring_is_not_forecast(fitted):
+    found = forecast(fitted, {"rate_per_min": 3.0})
+    assert all(found.next_gas[q] is None for q in QUANTITIES)
+    assert "150 mmHg" in found.cautions[0] or "no steady state" in found.cautions[0]
+
+
+def test_an_inspiration_longer_than_the_breath_is_refused(fitted):
+    with pytest.raises(Impossible, match="inspiratory_time_s"):
+        forecast(fitted, {"inspiratory_time_s": 8.0, "rate_per_min": 20.0})
+
+
+def test_a_time_long_after_the_chart_is_refused(fitted):
+    last = fitted.case.entries[-1].time
+    with pytest.raises(Impossible, match="at = "):
+        forecast(fitted, {}, at=last + timedelta(days=31))
 
 
 def test_settings_no_body_can_live_on_are_not_forecast(fitted):

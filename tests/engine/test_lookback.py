@@ -210,10 +210,6 @@ def test_later_gases_and_entries_do_not_reach_back():
     assert rows(long)[: len(SCORED)] == rows(short)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="a sample drawn before the change that its entry follows is forecast with minutes below zero",
-)
 def test_a_sample_drawn_before_the_last_change_is_forecast_under_the_settings_before():
     slowed = at(1, settings=Settings(rate_per_min=9))
     gas = at(1.5, gas=replace(LATER, drawn_at=slowed.time - 10 * MINUTE))

@@ -18,7 +18,7 @@ from engine.lung import (
     settled_gas,
     ventilation,
 )
-from engine.lung.arterial import LARGEST_SERIES_SHARE
+from engine.lung.arterial import FASTEST_PER_MIN, LARGEST_SERIES_SHARE, TRAPPING_MOST
 from engine.lung.breathing import EXCHANGER_ML, apparatus_dead_space_ml, last_settings
 from engine.lung.drift import EVENT, EVIDENCE, TAIL, heavy_tail
 from engine.lung.prior import INDEX, PARAMETERS
@@ -283,42 +283,49 @@ def test_steps_have_the_tail_of_student():
 # The gas that a belief gives
 
 
+def breathed(belief: Belief, breathing: Breathing):
+    """Nothing has moved since the first gas."""
+    return ventilation(belief, breathing, breathing)
+
+
 def test_the_larger_rate_ventilates():
     own = charted(Measured(total_rate_per_min=28))
     for set_rate, expected in ((12.0, 28.0), (20.0, 28.0), (32.0, 32.0)):
-        found = ventilation(belief_of(active=True), breathing_of(own, rate_per_min=set_rate))
+        found = breathed(belief_of(active=True), breathing_of(own, rate_per_min=set_rate))
         np.testing.assert_allclose(found.rate_per_min, expected)  # at the middle of what the own rate may be
-    stopped = ventilation(belief_of(active=True), breathing_of(own, rate_per_min=12.0), effort_stops=True)
+    slow = breathing_of(own, rate_per_min=12.0)
+    stopped = ventilation(belief_of(active=True), slow, slow, stopping=slow)
     np.testing.assert_allclose(stopped.rate_per_min, 12.0)
 
 
 def test_a_lowered_rate_is_felt_in_full_by_a_passive_and_in_part_by_an_active_patient():
     case = charted(Measured(total_rate_per_min=16))
     tried = breathing_of(case, rate_per_min=4.0)
-    np.testing.assert_allclose(ventilation(belief_of(active=False), tried).rate_per_min, 4.0)
-    active = ventilation(belief_of(active=True), tried).rate_per_min
+    np.testing.assert_allclose(breathed(belief_of(active=False), tried).rate_per_min, 4.0)
+    active = breathed(belief_of(active=True), tried).rate_per_min
     assert np.all((active > 4.0) & (active <= 16.0))
 
 
 def test_series_dead_space_is_taken_off_each_breath():
     belief = belief_of(ln_series_ml=np.log(90.0), apparatus_share=0.75)
-    bare = ventilation(belief, breathing_of(charted()))
+    bare = breathed(belief, breathing_of(charted()))
     # 0.02 mL: the form that keeps the series part below the breath is not quite 1 at normal volumes.
     np.testing.assert_allclose(bare.series_ml, 90.0, atol=0.02)
     np.testing.assert_allclose(bare.alveolar_l_per_min, 16 * (440 - bare.series_ml) / 1000)
-    device = ventilation(belief, breathing_of(charted(), apparatus_dead_space_ml=80.0))
+    device = breathed(belief, breathing_of(charted(), apparatus_dead_space_ml=80.0))
     np.testing.assert_allclose(device.series_ml, 90.0 + 0.75 * 80.0, atol=0.5)
 
 
 def test_the_smallest_breath_still_reaches_the_lung():
-    tiny = ventilation(belief_of(), breathing_of(charted(), tidal_volume_ml=60.0))
+    tiny = breathed(belief_of(), breathing_of(charted(), tidal_volume_ml=60.0))
     assert np.all(tiny.series_ml <= LARGEST_SERIES_SHARE * 60.0)
     assert np.all(tiny.alveolar_l_per_min > 0.0)
 
 
 def gas_of(belief: Belief, breathing: Breathing, reference: Breathing | None = None, **more: object):
     asked = {"hb_g_per_dl": 11.0, "barometric_mmhg": 760.0, "units": 11} | more
-    return arterial_gas(belief, breathing, reference or breathing, **asked)
+    given = ventilation(belief, breathing, reference or breathing, asked.pop("stopping", None))
+    return arterial_gas(belief, breathing, given, **asked)
 
 
 def test_a_defended_paco2_moves_less_and_is_not_moved_beyond():
@@ -335,6 +342,39 @@ def test_a_defended_paco2_moves_less_and_is_not_moved_beyond():
     assert paco2[2] == pytest.approx(before, rel=1e-3)
 
 
+def test_charted_paralysis_is_effort_that_stops():
+    """The same patient, once with effort stopped on the screen and once paralysed in the chart."""
+    case = charted(Measured(total_rate_per_min=28))
+    belief, now = belief_of(active=True, logit_defence=1.0), breathing_of(case)
+    later = Entry(time=case.entries[-1].time + HOUR, events=("paralysis",))
+    paralysed = breathing_of(replace(case, entries=(*case.entries, later)))
+    np.testing.assert_allclose(
+        gas_of(belief, paralysed, now).paco2_mmhg, gas_of(belief, now, now, stopping=now).paco2_mmhg
+    )
+
+
+def test_nobody_takes_back_a_loss_of_volume_by_breathing_at_sixty():
+    case = charted(Measured(total_rate_per_min=34))
+    belief, now = belief_of(active=True, logit_defence=9.0), breathing_of(case)
+    small = ventilation(belief, replace(now, tidal_volume_ml=260.0), now)
+    assert np.all(small.rate_per_min <= FASTEST_PER_MIN * (1.0 + 1e-9))
+    assert np.all(small.alveolar_l_per_min < ventilation(belief, now, now).alveolar_l_per_min)
+    mild = ventilation(belief, replace(now, tidal_volume_ml=430.0), now)
+    assert np.all((mild.rate_per_min > 34.0) & (mild.rate_per_min < FASTEST_PER_MIN))  # said, not hidden
+
+
+@pytest.mark.parametrize("rate", [10.0, 22.0])
+def test_trapped_gas_undoes_part_of_a_change_of_rate(rate):
+    """Scenario 3: a rate changes PaCO2 less than the plain equation says, by an unknown share."""
+    belief, now = belief_of(active=False), breathing_of(charted())
+    plain = ventilation(belief, replace(now, set_rate_per_min=rate), now).alveolar_l_per_min
+    slow = replace(now, obstructive=True)
+    trapped = ventilation(belief, replace(slow, set_rate_per_min=rate), slow).alveolar_l_per_min
+    unmoved = ventilation(belief, slow, slow).alveolar_l_per_min
+    share = np.log(trapped / unmoved) / np.log(plain / unmoved)
+    assert np.all((share >= 1.0 - TRAPPING_MOST) & (share <= 1.0))
+
+
 def test_effort_that_stops_is_missed_in_full():
     """The patient breathed at 28; with the set 16 alone PaCO2 rises as ventilation falls."""
     case = charted(Measured(total_rate_per_min=28))
@@ -348,7 +388,7 @@ def test_on_the_way_from_one_gas_to_the_other():
     case = charted(events=("paralysis",))
     belief, slow, fast = belief_of(), breathing_of(case), breathing_of(case, rate_per_min=22.0, fio2=0.7)
     before, after = gas_of(belief, slow), gas_of(belief, fast)
-    flow = ventilation(belief, fast).alveolar_l_per_min
+    flow = breathed(belief, fast).alveolar_l_per_min
 
     def at(minutes: float, obstructive: bool = False):
         return gas_on_the_way(

@@ -121,7 +121,7 @@ def test_1_a_high_paco2_is_not_said_to_hold_the_ph():
 @pytest.fixture(scope="module")
 def hypercapnia() -> Fit:
     usual = Baseline(paco2_mmhg=65, hco3_mmol_per_l=35)
-    patient = replace(MAN, conditions=("chronic_hypercapnia", "obstructive"), baseline=usual)
+    patient = replace(MAN, conditions=("chronic_hypercapnia",), baseline=usual)
     settings = Settings(mode="volume", rate_per_min=14, tidal_volume_ml=450, fio2=0.35, peep_cmh2o=5)
     return fitted(a_gas(7.35, 65, 65), settings, patient=patient, events=PASSIVE)
 
