@@ -7,22 +7,24 @@ VCO2. Arterial tensions follow from mixed contents, never from averaged tensions
 
 Equations, per unit with expired ventilation over flow ``r`` (BTPS over blood) and K = 8.63 mmHg dL/mL::
 
-    CO2   r PCO2 = K (CvCO2 - CcCO2)
-    O2    r (PIO2 - PO2 - FiO2 PCO2) = K (1 - FiO2) (CcO2 - CvO2)       nitrogen balance is in it
-    pH    whole-blood base excess is one value in the whole lung        (Van Slyke, langzander2002)
+CO2   r PCO2 = K (CvCO2 - CcCO2)
+O2    r (PIO2 - PO2 - FiO2 PCO2) = K (1 - FiO2) (CcO2 - CvO2)       nitrogen balance is in it
+pH    whole-blood base excess is one value in the whole lung        (Van Slyke, langzander2002)
 
 and per lung, with flow weights ``w`` and perfused flow (1 - s) Q::
 
-    CvO2  = sum(w CcO2)  - VO2  / (10 (1 - s) Q)
-    CvCO2 = sum(w CcCO2) + VCO2 / (10 (1 - s) Q)
+CvO2  = sum(w CcO2)  - VO2  / (10 (1 - s) Q)
+CvCO2 = sum(w CcCO2) + VCO2 / (10 (1 - s) Q)
 
 Arterial blood keeps its STANDARD base excess (extracellular buffer line, clsi_c46), since the whole body has
 had time; blood inside the lung buffers as whole blood, since a capillary transit takes under a second.
 
 Solved by Newton's method on all units, both mixed venous contents and arterial blood together: the unknowns
 of a unit meet other units only through the two venous contents, so each step eliminates the units (2 x 2
-each) and solves a 2 x 2 system a lung. Steps are in ln PO2, ln PCO2 and pH, bounded in size. The buffer line
-of the lung's blood follows arterial blood one step behind, which leaves about a fiftieth of its error a step.
+each) and solves a 2 x 2 system a lung. Blood is described by two numbers that give everything else outright:
+the PO2 of the standard curve, which is saturation, and bicarbonate, from which the buffer line gives pH and
+so both tensions. The level of that line follows arterial blood one step behind, which leaves about a
+hundredth of its error a step.
 
 Arrays of the solver are (rows, lungs): a row for each unit, then mixed venous blood, then arterial blood. The
 last two meet no gas, so they are units of no ventilation, and of no weight, and are solved like any other.
@@ -30,11 +32,13 @@ last two meet no gas, so they are units of no ventilation, and of no weight, and
 References
 ----------
 west1969 : J. B. West, "Ventilation-perfusion inequality and overall gas exchange in computer models of the
-    lung", Respir. Physiol. 7, 88-110, 1969 (the model of many units).
+lung", Respir. Physiol. 7, 88-110, 1969 (the model of many units).
 severinghaus1979, kelman1966 : saturation and its shift, see `engine.physics.oxygen`.
 douglas1988 : CO2 content of blood, see `engine.physics.carbon_dioxide`.
 langzander2002, clsi_c46 : base excess, see `engine.physics.acid_base`.
 farhi1967 : L. E. Farhi, "Elimination of inert gas by the lung", Respir. Physiol. 3, 1-11, 1967 (first guess).
+hill1910 : A. V. Hill, "The possible effects of the aggregation of the molecules of haemoglobin on its
+    dissociation curves", J. Physiol. 40 (suppl.), iv-vii, 1910 (first guess).
 """
 
 from dataclasses import dataclass
@@ -51,7 +55,7 @@ from engine.physics.acid_base import (
 )
 from engine.physics.air import BODY_WATER_VAPOUR_MMHG
 from engine.physics.carbon_dioxide import CO2_CONSTANT, co2_pk, co2_solubility_mmol_per_l_mmhg
-from engine.physics.oxygen import O2_CAPACITY_ML_PER_G, O2_SOLUBILITY_ML_PER_DL_MMHG, po2_from_so2_mmhg
+from engine.physics.oxygen import O2_CAPACITY_ML_PER_G, O2_SOLUBILITY_ML_PER_DL_MMHG
 
 Array = NDArray[np.float64]
 Some = NDArray[np.bool_]
@@ -60,21 +64,26 @@ LN10 = float(np.log(10.0))
 K = 10.0 * CO2_CONSTANT  # mmHg dL/mL: L BTPS of gas against dL STPD of content
 ECF_BUFFER = float(standard_base_excess_mmol_per_l(8.4, 0.0) - standard_base_excess_mmol_per_l(7.4, 0.0))
 
-UNITS = 15  # of the V/Q distribution: within 1.1 % of PaO2 and 0.1 mmHg of PaCO2 to SD 1.8
+UNITS = 15  # of the V/Q distribution: within 1.5 % of PaO2 and 0.15 mmHg of PaCO2 to SD 1.8
 REACH = 3.5  # SD of flow and of ventilation that the units span
 VENOUS, ARTERY = -2, -1  # the rows below the units
 MOST_EXTRACTED = 0.9  # share of end-capillary O2 the tissues can take; beyond it VO2 falls (numerical guard)
 LEAST_NITROGEN = 1e-9  # of inspired gas: keeps blood that meets no gas solvable at FiO2 1.0
 DOUGLAS_PH = (6.8, 7.8)  # outside, the red-cell factor of douglas1988 is held: it is singular at 8.142
-LARGEST_STEP = 1.0  # of ln PO2 and ln PCO2 in one Newton step
-LARGEST_PH_STEP = 0.25
-ROUNDS = (3, 1, 2, 4, 8, 40)  # steps before the settled lungs are set aside, again and again
-SETTLED = 1e-4  # last step of ln PO2 and ln PCO2: what is left is about its square
-LEVEL_SETTLED = 2e-5  # mmol/L, last step of the buffer line: what is left is about a fiftieth
+LARGEST_STEP = 1.0  # of the logarithms in one Newton step
+STEPS = 60
+PATIENCE = (
+    10  # steps; then the level goes half way, as between two pieces of a held slope it can swing for ever
+)
+SETTLED = 3e-4  # last step of the logarithms: what is left is about its square
+LEVEL_SETTLED = 5e-5  # mmol/L, last step of the level: what is left moves PaO2 by less than 1e-6 of itself
+SET_ASIDE = 0.5  # of a block: so many settled lungs are worth the copying of the others
 LUNGS_AT_ONCE = 1024  # many enough that the calls cost little, few enough for the processor's cache
-START_SOLUBILITY = 4.0  # of CO2 in blood over gas (farhi1967), about 40 mmHg
-START_CO2 = 2.45  # mL/dL of CO2 content a mmol/L of bicarbonate, in the alkaline units that need it most
-START_HALDANE = 0.35  # mL of CO2 that blood takes up at no cost in PCO2 as it gives off a mL of O2
+START_SOLUBILITY = 3.5  # of CO2 in blood over gas (farhi1967), and
+START_CO2 = 2.9  # mL/dL of CO2 content a mmol/L of bicarbonate: with these two most lungs take three steps
+
+# Asked for and given back at once: from then on the allocator keeps what it frees, a tenth of the time of a fit.
+np.empty(1 << 20)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -140,7 +149,7 @@ def steady_state(
     -------
     Exchange
         Arrays of the broadcast shape. NaN in, NaN out; a lung that does not converge is NaN and
-        not ``settled``.
+        not ``settled``. None does where CO2 leaves no room for oxygen: PaCO2 beyond about 360 mmHg.
     """
     given = np.broadcast_arrays(
         *(
@@ -190,21 +199,21 @@ class _Lungs(NamedTuple):
 class _Makeup(NamedTuple):
     """What the blood of a lung keeps while its tensions move, each (lungs,).
 
-    Oxygen: ``capacity`` in mL/dL; ``shift`` of the curve in ln PO2 at pH 7.4 and a PCO2 of 1 mmHg. CO2:
-    ``dissolved`` in plasma in mL/dL/mmHg; ``bound`` over dissolved at pH 7.4, and ``bound_z``, the slope of
-    its logarithm on pH; ``cells`` as in douglas1988. Whole-blood base excess in mmol/L is ``hco3`` PCO2
-    10^(pH - 7.4) + ``buffer`` (pH - 7.4) - ``deoxy`` (1 - S) and a constant.
+    Oxygen: ``capacity`` in mL/dL; ``warmth``, shift of the curve in ln PO2 at pH 7.4 and a PCO2 of 1 mmHg.
+    CO2: ``dissolved`` in plasma in mL/dL/mmHg; ``bound``, ln of bound over dissolved at pH 7.4, and its slope
+    ``bound_t`` on pH; ``cells`` as in douglas1988. Buffer line of whole blood, in mmol/L with t = pH - 7.4
+    and bicarbonate h = exp(``ln_hco3``) PCO2 10^t: h + ``buffer`` t - ``deoxy`` (1 - S) = level.
     """
 
     capacity: Array
-    shift: Array
     dissolved: Array
     bound: Array
-    bound_z: Array
+    bound_t: Array
     cells: Array
-    hco3: Array
+    ln_hco3: Array
     buffer: Array
     deoxy: Array
+    warmth: Array
 
 
 def _makeup(hb: Array, temperature: Array) -> _Makeup:
@@ -214,52 +223,50 @@ def _makeup(hb: Array, temperature: Array) -> _Makeup:
     nothing, pk = excess(7.4, 0.0, 1.0), co2_pk(7.4, temperature)
     return _Makeup(
         O2_CAPACITY_ML_PER_G * hb,
-        0.06 * np.log(40.0) + 0.024 * LN10 * (37.0 - temperature),
         2.226 * co2_solubility_mmol_per_l_mmhg(temperature),
-        np.exp(LN10 * (7.4 - pk)),
+        LN10 * (7.4 - pk),
         LN10 * (1.0 - co2_pk(8.4, temperature) + pk),
         0.0289 * hb,
-        excess(7.4, 1.0, 1.0) - nothing,
+        np.log(excess(7.4, 1.0, 1.0) - nothing),
         excess(8.4, 0.0, 1.0) - nothing,
         nothing - excess(7.4, 0.0, 0.0),
+        0.06 * np.log(40.0) + 0.024 * LN10 * (37.0 - temperature),
     )
 
 
 class _State(NamedTuple):
-    """Points in blood: ln PO2, ln PCO2 and pH."""
+    """Points in blood: ``v``, ln of PO2 on the standard curve, and ``u``, ln of bicarbonate."""
 
+    v: Array
+    u: Array
+
+
+class _Point(NamedTuple):
+    """Blood at a state: saturation and its slope on v, bicarbonate, pH - 7.4 (t), ln PO2 (x), ln PCO2 (y)."""
+
+    so2: Array
+    steep: Array
+    hco3: Array
+    t: Array
     x: Array
     y: Array
-    z: Array
 
 
 class _Blood(NamedTuple):
-    """Blood at some points, and its linear answer to a step once pH follows its buffer line.
-
-    ``o2`` and ``co2`` are contents in mL/dL after the pH correction ``dph`` alone; ``_x`` and ``_y`` are
-    slopes on ln PO2 and ln PCO2 along the buffer line, ``so2_z`` that on pH alone.
-    """
+    """Tensions, contents in mL/dL, and slopes of ln PO2 (``x``), ln PCO2 (``y``) and contents on v and u."""
 
     po2: Array
+    x_v: Array
+    x_u: Array
     pco2: Array
-    so2: Array
-    so2_x: Array
-    so2_y: Array
-    so2_z: Array
+    y_v: Array
+    y_u: Array
     o2: Array
-    o2_x: Array
-    o2_y: Array
+    o2_v: Array
+    o2_u: Array
     co2: Array
-    co2_x: Array
-    co2_y: Array
-    dph: Array
-    ph_x: Array
-    ph_y: Array
-
-
-def _shift(y: Array, z: Array, makeup: _Makeup) -> Array:
-    """What takes ln PO2 of this blood to ln PO2 on the standard curve."""
-    return 0.40 * LN10 * (z - 7.4) - 0.06 * y + makeup.shift
+    co2_v: Array
+    co2_u: Array
 
 
 def _saturation(standard: Array) -> tuple[Array, Array]:
@@ -271,58 +278,51 @@ def _saturation(standard: Array) -> tuple[Array, Array]:
     return so2, so2 * (1.0 - so2) * (3.0 - 300.0 / square)
 
 
-def _blood(state: _State, makeup: _Makeup, level: Array) -> _Blood:
-    """Contents and their slopes, on the buffer line of this level."""
-    x, y, z = state
-    alkali = z - 7.4
-    po2, pco2 = np.exp(x), np.exp(y)
-    so2, steep = _saturation(x + _shift(y, z, makeup))
-    so2_z = 0.40 * LN10 * steep
+def _shift(t: Array, y: Array, makeup: _Makeup) -> Array:
+    """What takes ln PO2 of this blood to ln PO2 on the standard curve."""
+    return 0.40 * LN10 * t - 0.06 * y + makeup.warmth
 
-    hco3 = makeup.hco3 * pco2 * np.exp(LN10 * alkali)
-    haldane = makeup.deoxy * steep
-    stiff = LN10 * hco3 + makeup.buffer + 0.40 * LN10 * haldane
-    misfit = level + makeup.deoxy * (1.0 - so2) - makeup.buffer * alkali - hco3
-    dph = _bounded(misfit / stiff, LARGEST_PH_STEP)
-    ph_x = -haldane / stiff
-    ph_y = (0.06 * haldane - hco3) / stiff
-    so2_x = steep + so2_z * ph_x
-    so2_y = so2_z * ph_y - 0.06 * steep
+
+def _point(state: _State, makeup: _Makeup, level: Array) -> _Point:
+    """Where blood stands on the buffer line of this level."""
+    so2, steep = _saturation(state.v)
+    hco3 = np.exp(state.u)
+    t = (level + makeup.deoxy * (1.0 - so2) - hco3) / makeup.buffer
+    y = state.u - LN10 * t - makeup.ln_hco3
+    return _Point(so2, steep, hco3, t, state.v - _shift(t, y, makeup), y)
+
+
+def _blood(p: _Point, makeup: _Makeup) -> _Blood:
+    """What blood at a point holds, and how it answers."""
+    po2, pco2 = np.exp(p.x), np.exp(p.y)
+    t_v, t_u = (-makeup.deoxy / makeup.buffer) * p.steep, (-1.0 / makeup.buffer) * p.hco3
+    y_v, y_u = -LN10 * t_v, 1.0 - LN10 * t_u
+    x_v, x_u = 1.0 + 0.46 * y_v, 0.46 * y_u - 0.40
     free_o2 = O2_SOLUBILITY_ML_PER_DL_MMHG * po2
 
     dissolved = makeup.dissolved * pco2
-    bound = dissolved * (makeup.bound * np.exp(makeup.bound_z * alkali))
+    bound = dissolved * np.exp(makeup.bound + makeup.bound_t * p.t)
     plasma = dissolved + bound
-    held = np.minimum(np.maximum(z, DOUGLAS_PH[0]), DOUGLAS_PH[1])
-    of_so2, of_ph = 3.352 - 0.456 * so2, 8.142 - held
-    cells = makeup.cells / (of_so2 * of_ph)
+    held = np.minimum(np.maximum(p.t, DOUGLAS_PH[0] - 7.4), DOUGLAS_PH[1] - 7.4)
+    of_so2, of_ph = 1.0 / (3.352 - 0.456 * p.so2), 1.0 / (0.742 - held)
+    cells = makeup.cells * of_so2 * of_ph
     missing = plasma * cells
     content = plasma - missing
-    co2_s = -0.456 * missing / of_so2
-    co2_z = makeup.bound_z * bound * (1.0 - cells) - missing / of_ph * (z == held) + co2_s * so2_z
+    on_t = makeup.bound_t * bound * (1.0 - cells) - missing * of_ph * (p.t == held) - LN10 * content
     return _Blood(
         po2,
+        x_v,
+        x_u,
         pco2,
-        so2,
-        so2_x,
-        so2_y,
-        so2_z,
-        makeup.capacity * (so2 + so2_z * dph) + free_o2,
-        makeup.capacity * so2_x + free_o2,
-        makeup.capacity * so2_y,
-        content + co2_z * dph,
-        co2_z * ph_x + co2_s * steep,
-        content + co2_z * ph_y - 0.06 * co2_s * steep,
-        dph,
-        ph_x,
-        ph_y,
+        y_v,
+        y_u,
+        makeup.capacity * p.so2 + free_o2,
+        makeup.capacity * p.steep + free_o2 * x_v,
+        free_o2 * x_u,
+        content,
+        on_t * t_v - 0.456 * missing * of_so2 * p.steep,
+        content + on_t * t_u,
     )
-
-
-def _level(y: Array, z: Array, so2: Array, makeup: _Makeup) -> Array:
-    """The level of the buffer line through a point."""
-    alkali = z - 7.4
-    return makeup.hco3 * np.exp(y + LN10 * alkali) + makeup.buffer * alkali - makeup.deoxy * (1.0 - so2)
 
 
 def _bounded(step: Array, most: float) -> Array:
@@ -352,7 +352,7 @@ class _Problem(NamedTuple):
     uptake: Array
     output: Array
 
-    def of(self, kept: Some) -> "_Problem":
+    def of(self, kept: NDArray[np.intp]) -> "_Problem":
         """The same problem for some of the lungs."""
         lungs, makeup, *arrays = self
         return _Problem(
@@ -397,36 +397,39 @@ def _start(problem: _Problem) -> tuple[_State, Array]:
     """First guess of all points and of the level: CO2 before O2, each by one step of its own.
 
     CO2 is first a gas of one solubility (farhi1967); then bicarbonate stands for its content, and the buffers
-    say which pH goes with it. O2 starts from what the gas of a unit can bring.
+    say which PCO2 goes with it. O2 starts from what the gas of a unit can bring.
     """
     lungs, makeup, r, _, weight, _, _, output = problem
     share = START_SOLUBILITY / (START_SOLUBILITY + r)
     venous = K * output / _sum(r * share, weight)
     artery = venous * ((1.0 - lungs.shunt) * _sum(share, weight) + lungs.shunt)
-    ph = ph_at_standard_base_excess(artery, lungs.sbe)
-    level = _level(np.log(artery), ph, np.full_like(ph, 0.95), makeup)
+    t = ph_at_standard_base_excess(artery, lungs.sbe) - 7.4
+    here = np.exp(makeup.ln_hco3 + LN10 * t) * artery  # bicarbonate of arterial blood
+    line = here + makeup.buffer * t
+    bend = LN10 / makeup.buffer
+    guess = here * np.exp(np.log(share * (venous / artery)) / (1.0 + bend * here))
+    gas = r / (START_CO2 * K) * np.exp(bend * (guess - line) - makeup.ln_hco3)
+    excess = guess * (gas + 1.0) - here - lungs.vco2 / (10.0 * lungs.output * START_CO2)
+    hco3 = guess - excess / (gas * (1.0 + bend * guess) + 1.0)
+    hco3[ARTERY] = (1.0 - lungs.shunt) * _sum(hco3, weight) + lungs.shunt * hco3[VENOUS]
 
-    here = makeup.hco3 * artery * np.exp(LN10 * (ph - 7.4))
-    line = here + makeup.buffer * (ph - 7.4)  # bicarbonate at pH 7.4
-    given_off = (lungs.vco2 - START_HALDANE * lungs.vo2 / (1.0 + r)) / (10.0 * lungs.output * START_CO2)
-    hco3 = here * (share * venous / artery) ** (makeup.buffer / (LN10 * here + makeup.buffer))
-    gas = r / (START_CO2 * K * makeup.hco3) * np.exp(LN10 / makeup.buffer * (hco3 - line))
-    excess = hco3 * (gas + 1.0) - np.maximum(here + given_off, 0.1 * here)
-    hco3 = hco3 - excess / (gas * (1.0 + LN10 / makeup.buffer * hco3) + 1.0)
-    z = 7.4 + (line - hco3) / makeup.buffer
-    y = np.log(hco3 / makeup.hco3) - LN10 * (z - 7.4)
-    y[ARTERY], z[ARTERY] = np.log(artery), ph
-    return _State(_start_of_o2(problem, np.exp(y), _shift(y, z, makeup)), y, z), level
+    u, t = np.log(hco3), (line - hco3) / makeup.buffer
+    y = u - LN10 * t - makeup.ln_hco3
+    v = _start_of_o2(problem, np.exp(y), _shift(t, y, makeup))
+    so2, _ = _saturation(v)
+    level = _level(y[ARTERY], so2[ARTERY], t[ARTERY], lungs.sbe, makeup)
+    kept = bend * (level - line + makeup.deoxy * (1.0 - so2)) / (1.0 + bend * hco3)  # PCO2 stays where it is
+    return _State(v, u + kept), level
 
 
 def _start_of_o2(problem: _Problem, pco2: Array, shift: Array) -> Array:
-    """First guess of ln PO2: a Newton step of the units for O2 alone, then blood of the contents it gives."""
+    """First guess of v: a Newton step of the units for O2 alone, then blood of the contents it gives."""
     lungs, makeup, r, inspired, weight, nitrogen, uptake, _ = problem
     capacity = makeup.capacity
     venous = np.maximum(0.98 * capacity - uptake, 0.2 * capacity)
     brought = inspired - lungs.fio2 * r * pco2
-    starved = po2_from_so2_mmhg(_within((venous + (brought - 45.0 * r) / nitrogen) / capacity, 0.3, 0.97))
-    x = np.fmax(np.log((brought - nitrogen * (capacity - venous)) / r), np.log(starved) - shift)
+    starved = _hill((venous + (brought - 45.0 * r) / nitrogen) / capacity) - shift
+    x = np.fmax(np.log((brought - nitrogen * (capacity - venous)) / r), starved)
     o2, o2_x = _o2(x, shift, capacity)
     gas = r * np.exp(x)
     stiff = gas + nitrogen * o2_x
@@ -438,14 +441,15 @@ def _start_of_o2(problem: _Problem, pco2: Array, shift: Array) -> Array:
 
     mixed = (1.0 - lungs.shunt) * (capillary + back * venous) + lungs.shunt * venous
     content = np.stack([venous, mixed])
-    shift = shift[VENOUS:]
-    carried = np.log(po2_from_so2_mmhg(_within(content / capacity, 0.05, 0.98))) - shift
-    ends = np.fmax(carried, np.log((content - capacity) / O2_SOLUBILITY_ML_PER_DL_MMHG))
+    whole, shift = shift, shift[VENOUS:]
+    ends = np.fmax(
+        _hill(content / capacity) - shift, np.log((content - capacity) / O2_SOLUBILITY_ML_PER_DL_MMHG)
+    )
     for _ in range(2):
         o2, o2_x = _o2(ends, shift, capacity)
         ends = ends + _bounded((content - o2) / o2_x, LARGEST_STEP)
     x[VENOUS:] = ends
-    return x
+    return x + whole
 
 
 def _o2(x: Array, shift: Array, capacity: Array) -> tuple[Array, Array]:
@@ -453,6 +457,12 @@ def _o2(x: Array, shift: Array, capacity: Array) -> tuple[Array, Array]:
     so2, steep = _saturation(x + shift)
     free = O2_SOLUBILITY_ML_PER_DL_MMHG * np.exp(x)
     return capacity * so2 + free, capacity * steep + free
+
+
+def _hill(so2: Array) -> Array:
+    """About ln PO2 on the standard curve (hill1910), of any guess at a saturation."""
+    so2 = _within(so2, 0.05, 0.98)
+    return np.asarray(np.log(26.9) + np.log(so2 / (1.0 - so2)) / 2.7)
 
 
 def _within(values: Array, low: float, high: float) -> Array:
@@ -469,25 +479,27 @@ class _Step(NamedTuple):
     lost: Some
 
 
-def _step(problem: _Problem, now: _State, level: Array) -> _Step:
+def _step(problem: _Problem, now: _State, level: Array, pace: float = 1.0) -> _Step:
     """One Newton step of all rows and of both mixed venous contents.
 
     A row's step is linear in the O2 and CO2 that come with its blood. Put into the closing equations that
     leaves a 2 x 2 system a lung for the venous contents; arterial blood then takes the mixed contents.
     """
     lungs, makeup, r, inspired, weight, nitrogen, uptake, output = problem
-    b = _blood(now, makeup, level)
+    here = _point(now, makeup, level)
+    b = _blood(here, makeup)
     gas_o2, gas_co2 = r * b.po2, r * b.pco2
     made_room = lungs.fio2 * gas_co2
-    a11, a12 = gas_o2 + nitrogen * b.o2_x, made_room + nitrogen * b.o2_y
-    a21, a22 = K * b.co2_x, gas_co2 + K * b.co2_y
-    det = a11 * a22 - a12 * a21  # of a (dx, dy) = f + (nitrogen, K) x contents that come
-    x1, x2, y1, y2 = a22 / det, -a12 / det, -a21 / det, a11 / det
+    a11 = gas_o2 * b.x_v + made_room * b.y_v + nitrogen * b.o2_v
+    a12 = gas_o2 * b.x_u + made_room * b.y_u + nitrogen * b.o2_u
+    a21, a22 = gas_co2 * b.y_v + K * b.co2_v, gas_co2 * b.y_u + K * b.co2_u
+    inverse = 1.0 / (a11 * a22 - a12 * a21)  # of a (dx, dy) = f + (nitrogen, K) x contents that come
     f1 = inspired - gas_o2 - made_room - nitrogen * b.o2
     f2 = -gas_co2 - K * b.co2
 
-    o1, o2 = weight * (b.o2_x * x1 + b.o2_y * y1), weight * (b.o2_x * x2 + b.o2_y * y2)
-    c1, c2 = weight * (b.co2_x * x1 + b.co2_y * y1), weight * (b.co2_x * x2 + b.co2_y * y2)
+    shared = weight * inverse
+    o1, o2 = shared * (b.o2_v * a22 - b.o2_u * a21), shared * (b.o2_u * a11 - b.o2_v * a12)
+    c1, c2 = shared * (b.co2_v * a22 - b.co2_u * a21), shared * (b.co2_u * a11 - b.co2_v * a12)
     o = _sum(b.o2, weight) + _sum(o1, f1) + _sum(o2, f2)  # end-capillary contents, were venous ones nothing
     c = _sum(b.co2, weight) + _sum(c1, f1) + _sum(c2, f2)
     oo, oc = nitrogen * o1.sum(axis=0), K * o2.sum(axis=0)  # and what venous ones add
@@ -511,33 +523,46 @@ def _step(problem: _Problem, now: _State, level: Array) -> _Step:
     f2[:ARTERY] += K * vco2
     f1[ARTERY] += nitrogen * ao2
     f2[ARTERY] += K * aco2
-    dx, dy = _bounded(f1 * x1 + f2 * x2, LARGEST_STEP), _bounded(f1 * y1 + f2 * y2, LARGEST_STEP)
-    dz = b.dph + b.ph_x * dx + b.ph_y * dy
-    new = _State(now.x + dx, now.y + dy, now.z + dz)
+    dv = _bounded((f1 * a22 - f2 * a12) * inverse, LARGEST_STEP)
+    du = _bounded((f2 * a11 - f1 * a21) * inverse, LARGEST_STEP)
 
-    rise = b.so2_z[ARTERY] * b.dph[ARTERY] + b.so2_x[ARTERY] * dx[ARTERY] + b.so2_y[ARTERY] * dy[ARTERY]
-    so2 = _within(b.so2[ARTERY] + rise, 0.0, 1.0)
-    new_level = _level(new.y[ARTERY], _arterial_ph(new, lungs.sbe), so2, makeup)
-    moved = np.maximum(np.abs(dx), np.abs(dy)).max(axis=0)
-    settled = (moved <= SETTLED) & (np.abs(new_level - level) <= LEVEL_SETTLED)
-    return _Step(new, new_level, cut > enough, settled, np.isnan(moved))
+    dva, dua = dv[ARTERY], du[ARTERY]
+    dy = b.y_v[ARTERY] * dva + b.y_u[ARTERY] * dua
+    so2 = _within(here.so2[ARTERY] + here.steep[ARTERY] * dva, 0.0, 1.0)
+    t = here.t[ARTERY] + (dua - dy) / LN10
+    rise = _level(here.y[ARTERY] + dy, so2, t, lungs.sbe, makeup) - level
+    kept = pace * LN10 / makeup.buffer * rise / b.y_u  # PCO2 stays where it is as the level moves
+    new = _State(now.v + dv, now.u + du + kept)
+    moved = np.maximum(np.abs(dv), np.abs(du)).max(axis=0)
+    settled = (moved <= SETTLED) & (np.abs(rise) <= LEVEL_SETTLED)
+    return _Step(new, level + pace * rise, cut > enough, settled, np.isnan(moved))
 
 
-def _arterial_ph(state: _State, sbe: Array) -> Array:
-    """pH of arterial blood at its standard base excess: a Newton step from where it is."""
-    ph, pco2 = state.z[ARTERY], np.exp(state.y[ARTERY])
-    misfit = standard_base_excess_mmol_per_l(ph, pco2) - sbe
-    return np.asarray(ph - misfit / (LN10 * hco3_mmol_per_l(ph, pco2) + ECF_BUFFER))
+def _level(y: Array, so2: Array, t: Array, sbe: Array, makeup: _Makeup) -> Array:
+    """The level of the buffer line through arterial blood at its standard base excess, pH about 7.4 + t.
+
+    That pH is found by one step of Newton's method.
+    """
+    pco2 = np.exp(y)
+    misfit = standard_base_excess_mmol_per_l(7.4 + t, pco2) - sbe
+    t = t - misfit / (LN10 * hco3_mmol_per_l(7.4 + t, pco2) + ECF_BUFFER)
+    return np.asarray(np.exp(y + makeup.ln_hco3 + LN10 * t) + makeup.buffer * t - makeup.deoxy * (1.0 - so2))
 
 
 def _solve(lungs: _Lungs, units: int) -> tuple[NDArray[Any], ...]:
     """Newton's method on one block of lungs; returns the fields of `Exchange` in order."""
     problem = _laid_out(lungs, units)
-    (x, y, z), level, held, settled = _newton(problem)
-    ends = _State(x[VENOUS:], y[VENOUS:], z[VENOUS:])
-    svo2, sao2 = _blood(ends, problem.makeup, level).so2
+    state, level, held, settled = _newton(problem)
+    so2, _, _, t, x, y = _point(state, problem.makeup, level)
     vented = _sum(problem.r * np.exp(y), problem.weight) / _sum(problem.r, problem.weight)
-    known = (np.exp(x[ARTERY]), np.exp(y[ARTERY]), z[ARTERY], sao2, svo2, vented * (1.0 - lungs.dead))
+    known = (
+        np.exp(x[ARTERY]),
+        np.exp(y[ARTERY]),
+        7.4 + t[ARTERY],
+        so2[ARTERY],
+        so2[VENOUS],
+        vented * (1.0 - lungs.dead),
+    )
     return (*(np.where(settled, v, np.nan) for v in known), held & settled, settled)
 
 
@@ -546,17 +571,17 @@ def _newton(problem: _Problem) -> tuple[_State, Array, Some, Some]:
     state, level = _start(problem)
     held, settled = np.zeros((2, level.size), dtype=bool)
     rest, part, at, on = np.arange(level.size), problem, state, level
-    for steps in ROUNDS:
-        for _ in range(steps):
-            last = _step(part, at, on)
-            at, on = last.state, last.level
-            if (last.settled | last.lost).all():
-                break
+    for step in range(1, STEPS + 1):
+        last = _step(part, at, on, 1.0 if step <= PATIENCE else 0.5)
+        at, on = last.state, last.level
+        done = last.settled | last.lost
+        if np.count_nonzero(done) < SET_ASIDE * done.size and step < STEPS:
+            continue
         news = (*at, on, last.held, last.settled)
         for whole, new in zip((*state, level, held, settled), news, strict=True):
             whole[..., rest] = new
-        late = ~(last.settled | last.lost)
-        if not late.any():
+        if done.all():
             break
+        late = np.flatnonzero(~done)
         rest, part, at, on = rest[late], part.of(late), _State(*(a[:, late] for a in at)), on[late]
     return state, level, held, settled
