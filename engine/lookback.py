@@ -78,13 +78,15 @@ def lookback(
 
 
 def _replayed(path: Path, read_as: str, seed: int) -> tuple[list[dict[str, Any]], str | None]:
+    """The rows of one file, as far as they go, and why they go no further."""
+    rows: list[dict[str, Any]] = []
     try:
-        case = read_case(path)
-        rows = list(rows_of(case, path.stem, read_as=read_as, seed=seed))
+        for row in rows_of(read_case(path), path.stem, read_as=read_as, seed=seed):
+            rows.append(row)
     except (BadCase, NothingToSay, OSError) as reason:
-        return [], str(reason)
+        return rows, str(reason)
     except Exception as fault:  # whatever befalls one case is named and must not stop the rest
-        return [], f"a fault of the program: {type(fault).__name__}: {fault}"
+        return rows, f"a fault of the program: {type(fault).__name__}: {fault}"
     return rows, None if rows else "fewer than two usable gases"
 
 
@@ -92,7 +94,7 @@ def rows_of(case: Case, name: str, *, read_as: str, seed: int) -> Iterator[dict[
     """The rows of one case."""
     numbers = case.usable_gases()
     fits = fits_along(case, seed=seed, draws=LOOKBACK_DRAWS, read_as=read_as)
-    for fit, number in zip(fits, numbers[1:], strict=False):
+    for number, fit in zip(numbers[1:], fits, strict=False):  # in this order the last gas is not fitted
         yield from _rows_of_gas(case, name, fit, number, seed)
 
 

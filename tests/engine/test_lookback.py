@@ -216,11 +216,6 @@ def test_a_sample_drawn_before_the_last_change_is_forecast_under_the_settings_be
     assert rows(stay(slowed, gas))[0]["q50"] == pytest.approx(GAS.paco2_mmhg, rel=0.05)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="the last gas is fitted although nothing is forecast from it, and where nothing explains it all "
-    "rows of the case are lost",
-)
 def test_a_last_gas_that_nothing_explains_takes_no_row_away():
     impossible = at(1, settings=Settings(tidal_volume_ml=60))
     assert len(rows(stay(at(0.9, gas=GAS), impossible, GAS_AT_4))) >= len(SCORED)
