@@ -64,7 +64,7 @@ LN10 = float(np.log(10.0))
 K = 10.0 * CO2_CONSTANT  # mmHg dL/mL: L BTPS of gas against dL STPD of content
 ECF_BUFFER = float(standard_base_excess_mmol_per_l(8.4, 0.0) - standard_base_excess_mmol_per_l(7.4, 0.0))
 
-UNITS = 15  # of the V/Q distribution: within 1.5 % of PaO2 and 0.15 mmHg of PaCO2 to SD 1.8
+UNITS = 15  # of the V/Q distribution: within 1.3 % of PaO2 and 0.2 mmHg of PaCO2 to SD 1.8 (5,000 lungs)
 REACH = 3.5  # SD of flow and of ventilation that the units span
 VENOUS, ARTERY = -2, -1  # the rows below the units
 MOST_EXTRACTED = 0.9  # share of end-capillary O2 the tissues can take; beyond it VO2 falls (numerical guard)
@@ -82,7 +82,7 @@ LUNGS_AT_ONCE = 1024  # many enough that the calls cost little, few enough for t
 START_SOLUBILITY = 3.5  # of CO2 in blood over gas (farhi1967), and
 START_CO2 = 2.9  # mL/dL of CO2 content a mmol/L of bicarbonate: with these two most lungs take three steps
 
-# Asked for and given back at once: from then on the allocator keeps what it frees, a tenth of the time of a fit.
+# Asked for and given back at once: from then on the allocator keeps what it frees, a tenth of a fit's time.
 np.empty(1 << 20)
 
 
