@@ -100,8 +100,8 @@ def test_seeds_agree_after_one_gas(stay):
 @pytest.mark.slow
 @pytest.mark.xfail(
     strict=True,
-    reason="after five gases means differ by 0.24 posterior SD from seed to seed, with three times the moves by "
-    "0.18",
+    reason="after five gases means differ by 0.24 posterior SD from seed to seed, with three times "
+    "the moves by 0.18",
 )
 def test_seeds_agree_after_five_gases(stay):
     case = stay.case(*SEVERAL_FIO2, rng=np.random.default_rng(11))
