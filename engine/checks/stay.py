@@ -48,7 +48,7 @@ def station_pressure(case: Case) -> Check | None:
         ok = None
         says = (
             "Neither barometric pressure nor altitude is charted: 760 mmHg is assumed. At altitude a "
-            "healthy lung would then look shunted: at 3,500 m a shunt of 5 % reads as 13 %."
+            "healthy lung would then look shunted: at 3,500 m the thin air alone is read as shunt."
         )
     elif site.barometric_mmhg is not None and site.altitude_m is not None:
         standard = float(barometric_mmhg_from_altitude(site.altitude_m))
