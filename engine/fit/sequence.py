@@ -34,7 +34,7 @@ Array = NDArray[np.float64]
 Rows = NDArray[np.int64]
 
 DRAWS = 1000
-FIT_UNITS = 11  # V/Q nodes while fitting: within 0.02 % of PaO2 in the median lung, far below scatter
+FIT_UNITS = 13  # V/Q nodes while fitting: PaO2 of the worst of a thousand lungs within 2 %, below scatter
 SMOOTHING = 0.15  # share of the posterior SD that each draw is moved by before it drifts
 NEARBY = timedelta(hours=1)  # a cardiac output, VO2, VCO2 or SvO2 this old still belongs to the gas
 STANDARD_WEIGHT_KG = 70.0
