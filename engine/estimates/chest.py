@@ -44,6 +44,7 @@ class Mechanics:
     set_peep_cmh2o: float | None = None
     flow_l_per_min: float | None = None
     inspiratory_time_s: float | None = None
+    rate_per_min: float | None = None
     passive: bool = False
     why: str = "no plateau pressure is charted in the last 24 h"
 
@@ -99,6 +100,7 @@ def _read(moment: Moment) -> Mechanics:
         set_peep_cmh2o=settings.peep_cmh2o,
         flow_l_per_min=flow_of(settings),
         inspiratory_time_s=inspiratory_time_of(settings),
+        rate_per_min=settings.rate_per_min,
         passive=not why,
         why=why,
     )

@@ -63,6 +63,12 @@ def plateau(tried: Tried) -> Limit:
     if value is not None and why:
         ok = False if ok is False else None
         says += f" It may read too low here: {why}."
+    if (trapped_ml := _newly_trapped_ml(tried)) is not None and value is not None:
+        ok = False if ok is False else None
+        says += (
+            f" About {trapped_ml:.0f} mL would stay trapped at this faster rate: the plateau would read "
+            "higher than this, by an unknown amount."
+        )
     if "raised_abdominal_pressure" in tried.patient.conditions:
         says += " Abdominal pressure is raised: part of it is chest wall, not lung."
     return Limit(
@@ -72,10 +78,21 @@ def plateau(tried: Tried) -> Limit:
         limit=PLATEAU_CMH2O,
         unit="cmH2O",
         ok=ok,
-        probability=None if draws is None else share_inside(as_read(tried, draws), high=PLATEAU_CMH2O),
+        probability=None
+        if draws is None or trapped_ml is not None
+        else share_inside(as_read(tried, draws), high=PLATEAU_CMH2O),
         says=says,
         source="ARDS Network 2000 N Engl J Med 342:1301; spread: reasoned, no source",
     )
+
+
+def _newly_trapped_ml(tried: Tried) -> float | None:
+    """Volume trapped at a rate faster than the plateau was read at; ``None``: little, or not known."""
+    then, now = tried.mechanics.rate_per_min, middle(tried.rate_per_min)
+    if set_pressure_cmh2o(tried) is not None or then is None or now is None or now <= then:
+        return None
+    trapped = middle(trapped_draws_ml(tried, expiratory_times_s(tried), time_constants(tried).plain_s))
+    return trapped if trapped is not None and trapped > TRAPPED_ML else None
 
 
 def driving_pressure(tried: Tried) -> Limit:

@@ -2,15 +2,20 @@
 
 from dataclasses import replace
 from datetime import UTC, datetime, timedelta
+from pathlib import Path
 
 import numpy as np
 import pytest
 
-from engine.limits import Mechanics, mechanics_of
+from engine.limits import Mechanics, limits_for, mechanics_of
+from engine.lung.breathing import last_settings
+from engine.reading.case_file import read_case
 from engine.record import Case, Entry, Measured, Patient, Settings
 from tests.engine.conftest import CHEST, with_condition
 from tests.engine.conftest import TRIED as SETTINGS
 from tests.engine.conftest import find_limit as find
+
+DEMOS = Path(__file__).parents[2] / "demo_patients"
 
 MEDIAN_OF_DRAWS = 0.05  # cmH2O: the median of 2,000 draws with a spread of 1.7
 POWER = 0.02  # J/min: the example rounds 0.0980665 to 0.098
@@ -201,7 +206,7 @@ def chart(*, hours: float = 0.0, settings: Settings = SETTINGS, **measured: floa
 
 def test_the_chest_is_read_with_the_settings_of_then():
     found = mechanics_of(chart(plateau_cmh2o=24, peak_cmh2o=30, total_rate_per_min=19))
-    assert found == replace(CHEST, plateau_cmh2o=24)
+    assert found == replace(CHEST, plateau_cmh2o=24, rate_per_min=18)
     assert found.compliance_ml_per_cmh2o == pytest.approx(30)
     assert found.resistance_cmh2o_s_per_l == pytest.approx(6 / 0.42)
 
@@ -232,3 +237,26 @@ def test_total_peep_counts_until_set_peep_moves():
 
 def test_no_entries_no_chest():
     assert mechanics_of(Case(label="Bed 7")) == Mechanics()
+
+
+def test_a_plateau_read_at_a_slower_rate_is_not_kept_where_gas_would_be_trapped():
+    """Hazard 10: trapped gas raises the plateau by an amount that a slower reading does not tell."""
+    case = read_case(DEMOS / "severe_asthma.json")
+    rows = {}
+    for rate in (14.0, 24.0):
+        settings = last_settings(case).then(Settings(rate_per_min=rate))
+        found = limits_for(
+            case.patient,
+            settings,
+            mechanics_of(case),
+            ph=None,
+            pao2_mmhg=None,
+            paco2_mmhg=None,
+            total_rate_per_min=rate,
+            effective_tidal_volume_ml=settings.tidal_volume_ml,
+            seed=1,
+        )
+        rows[rate] = next(row for row in found if row.name == "plateau")
+    assert rows[14.0].ok is True
+    assert rows[24.0].ok is None and rows[24.0].probability is None
+    assert "trapped" in rows[24.0].says
