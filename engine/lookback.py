@@ -26,7 +26,7 @@ from engine.record import Case, Entry
 Array = NDArray[np.float64]
 
 SCORED = ("paco2_mmhg", "pao2_mmhg", "ph")
-LOOKBACK_DRAWS = 1000
+LOOKBACK_DRAWS = 2000  # twice those of a screen: scores should not hang on the seed
 
 
 @dataclass(frozen=True, slots=True)
