@@ -15,7 +15,7 @@ CAUTION = (
     "Estimates, not measurements. Local protocol and licensed practice come first. "
     "Not for emergencies. Not a certified medical device."
 )
-SURELY_KEPT = 0.9  # a limit kept with less probability than this is shown with those that are not
+GRAVEST_FIRST = ("past", "in doubt", "short")  # verdicts of the limits that are shown in full
 _WIDTH = 100
 _LOOKS = {"ph": "pH", "paco2_mmhg": "PaCO2 mmHg", "pao2_mmhg": "PaO2 mmHg", "sao2": "SaO2 %"}
 _TARGETS = {"ph": "pH", "paco2": "PaCO2", "pao2": "PaO2", "sao2": "SaO2", "all": "all together"}
@@ -108,16 +108,19 @@ def _percent(chance: float) -> str:
 
 
 def _limits_text(limits: Sequence[Limit]) -> list[str]:
-    touched = [limit for limit in limits if _doubtful(limit)]
+    touched = sorted(
+        (limit for limit in limits if limit.verdict in GRAVEST_FIRST),
+        key=lambda limit: (
+            limit.verdict == "short",
+            limit.level != "hard",
+            GRAVEST_FIRST.index(limit.verdict),
+        ),
+    )
     unknown = [_spelt(limit.name) for limit in limits if limit.ok is None and limit not in touched]
     kept = len(limits) - len(touched) - len(unknown)
     lines = [f"Limits: {len(touched)} passed or in doubt, {kept} kept, {len(unknown)} not known."]
     lines += [item(_limit_text(limit)) for limit in touched]
     return lines + ([item(f"Not known: {', '.join(unknown)}.")] if unknown else [])
-
-
-def _doubtful(limit: Limit) -> bool:
-    return limit.ok is False or (limit.probability is not None and limit.probability < SURELY_KEPT)
 
 
 def _limit_text(limit: Limit) -> str:

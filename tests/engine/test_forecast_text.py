@@ -7,8 +7,8 @@ from datetime import UTC, datetime, timedelta, timezone
 import numpy as np
 
 from engine.forecast import Draws, Forecast, Recheck
-from engine.handover.forecast_text import CAUTION, SURELY_KEPT, forecast_text
-from engine.limits import Limit
+from engine.handover.forecast_text import CAUTION, forecast_text
+from engine.limits import SURELY_KEPT, Limit
 from engine.record import Case, Entry, Settings
 
 START = datetime(2031, 3, 4, 7, 40, tzinfo=UTC)
@@ -173,3 +173,14 @@ def test_cautions_and_the_standing_caution_close_the_page():
         "Not a certified medical",
     ):
         assert words in CAUTION
+
+
+def test_the_gravest_limit_stands_first():
+    rows = (
+        a_limit(name="mechanical_power", value=23.0, limit=17.0, unit="J/min", level="soft"),
+        a_limit(name="ph_ceiling", value=7.53, limit=7.55, unit="", ok=True, probability=0.8),
+        a_limit(name="plateau", value=31.0),
+    )
+    text = paragraph(forecast_text(a_forecast(limits=rows), CASE, "Bed 7"))
+    places = [text.index(f"- {word}") for word in ("plateau", "pH ceiling", "mechanical power")]
+    assert places == sorted(places)
